@@ -1,0 +1,1 @@
+"""Compiled floor: floats and arrays only."""

@@ -1,0 +1,1 @@
+"""What the field gave us: reading, findings, alignment, and the frozen `Record`."""
