@@ -8,9 +8,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-import numpy as np
-
-from auditor.arrays import FloatArray, read_only
+from auditor.arrays import FloatArray
 from auditor.controllers.pid import Pid
 
 
@@ -66,7 +64,7 @@ class Plant:
     log_posterior : float
         Log posterior of the draw, for ranking draws of one log only.
     load : Load
-    parameters : ndarray, shape (9,)
+    parameters : tuple of float
         The estimator's own parameter vector, kept so that a saved model can be continued.
     """
 
@@ -84,7 +82,7 @@ class Plant:
     damping: float | None = None
     zero_s: float = 0.0
     log_posterior: float = 0.0
-    parameters: FloatArray = read_only(np.zeros(9))  # noqa: RUF009 - read-only, safe to share
+    parameters: tuple[float, ...] = ()
 
     @property
     def order(self) -> int:
