@@ -1,4 +1,4 @@
-"""Readable face of the closed-loop replay: settings, measures, and what a replay answers."""
+"""What a replay is asked and what it answers."""
 
 from __future__ import annotations
 
@@ -99,8 +99,10 @@ class Replay:
         90 % interval of (rule − clock) in RMS error.
     members : mapping of str to ndarray, shape (draws,)
         `updates` and `rms_error` of every draw.
+    median_member : int
+        The draw whose count is the median; series and pictures show it.
     series : Series or None
-        Of the member whose count is the median.
+        Of that draw.
     """
 
     setting: Setting
@@ -119,4 +121,8 @@ class Replay:
     periodic_rms_error: float | None = None
     rms_difference90: tuple[float, float] | None = None
     against_periodic_rest: str = "unclear"
+    interval90_first: Mapping[str, tuple[float, float]] = field(default_factory=lambda: MappingProxyType({}))
+    interval90_rest: Mapping[str, tuple[float, float]] = field(default_factory=lambda: MappingProxyType({}))
+    against_periodic_first: str = "unclear"
+    median_member: int = 0
     series: Series | None = None

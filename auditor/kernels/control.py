@@ -1,0 +1,117 @@
+"""The control law with uneven execution times, over lanes (method, equations 3.1–3.4).
+
+K, h, Ti, Td, Tf as in the method; I, D, e, v are per lane. Choices shared by all lanes are integers in `form`.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+
+from auditor.arrays import FloatArray, IntArray
+from auditor.kernels import rows as R
+from auditor.kernels.jit import compiled
+
+
+@compiled
+def deadbanded(e: float, width: float) -> float:
+    """Error as the controller sees it: zero up to `width`."""
+    return 0.0 if abs(e) <= width else e
+
+
+@compiled
+def clip(x: float, low: float, high: float) -> float:
+    """`x` held inside low…high."""
+    return high if x > high else (low if x < low else x)
+
+
+@compiled
+def begin(control: FloatArray, count: IntArray, now: FloatArray, u0: float, pid: FloatArray, form: IntArray) -> None:
+    """Start a span from the record: I = u0 − K e0, D = 0, the actuator where it was."""
+    for lane in range(now.shape[1]):
+        e = deadbanded(now[R.ERROR, lane], pid[R.DEADBAND])
+        r = now[R.SETPOINT, lane]
+        control[R.INTEGRAL, lane] = u0 - pid[R.GAIN] * (e + pid[R.WEIGHT] * r)
+        control[R.DERIVATIVE, lane] = 0.0
+        control[R.ERROR_THEN, lane] = e
+        control[R.SLOPE_THEN, lane] = e if form[R.RATE_ON_ERROR] == 1 else -now[R.MEASUREMENT, lane]
+        control[R.RECEIVED, lane] = now[R.MEASUREMENT, lane]
+        control[R.COMMAND, lane] = clip(u0, pid[R.LOW], pid[R.HIGH])
+        control[R.WOULD, lane] = control[R.COMMAND, lane]
+        control[R.POSITION, lane] = u0
+        control[R.SETPOINT_THEN, lane] = r
+        control[R.DEVIATION, lane] = 0.0
+        count[R.SINCE_RUN, lane] = 0
+        count[R.LATCHED, lane] = 0
+
+
+@compiled
+def bridged(
+    I: float, e: float, then: float, held: float, m: float, pid: FloatArray, form: IntArray, alpha: float
+) -> float:  # noqa: E741
+    """I after a silence of m samples (3.1)."""
+    b = then if form[R.INTEGRATE] == R.FORWARD else e
+    b = 0.5 * (then + e) if form[R.INTEGRATE] == R.TRAPEZOID else b
+    c = e if form[R.BRIDGE] == R.BRIDGE_CURRENT else then
+    summed = I + pid[R.INTEGRAL_STEP] * ((m - 1.0) * c + b)
+    return I + alpha * (held - I) if form[R.BRIDGE] == R.BRIDGE_SATURATING else summed
+
+
+@compiled
+def unwound(
+    I: float, before: float, v: float, rho: float, command: float, m: float, pid: FloatArray, form: IntArray
+) -> float:  # noqa: E741
+    """I after anti-windup; a controller without integral action keeps its bias."""
+    share = 1.0 if pid[R.TRACKING] == 0.0 else min(1.0, m * pid[R.PERIOD] / pid[R.TRACKING])
+    drained = I + (command - v - rho) * share
+    grows = (v + rho > pid[R.HIGH] and I > before) or (v + rho < pid[R.LOW] and I < before)
+    frozen = before if grows else I
+    result = drained if form[R.WINDUP] == R.WINDUP_BACK else I
+    result = frozen if form[R.WINDUP] == R.WINDUP_FREEZE else result
+    return I if pid[R.INTEGRAL_STEP] == 0.0 else result
+
+
+@compiled
+def run_lane(
+    lane: int, y: float, r: float, rho: float, m: float, alpha: float, control: FloatArray, pid: FloatArray, form: IntArray
+) -> None:
+    """Run the controller of one lane on measurement y, m samples after it ran last; leaves the command in WOULD."""
+    e = deadbanded(r - y, pid[R.DEADBAND])
+    before = control[R.INTEGRAL, lane]
+    s = e if form[R.RATE_ON_ERROR] == 1 else -y
+    lag = pid[R.FILTER] + m * pid[R.PERIOD]
+    D = (pid[R.FILTER] * control[R.DERIVATIVE, lane] + pid[R.RATE_GAIN] * (s - control[R.SLOPE_THEN, lane])) / lag
+    I = bridged(before, e, control[R.ERROR_THEN, lane], control[R.COMMAND, lane], m, pid, form, alpha)  # noqa: E741
+    fixed = pid[R.GAIN] * (e + pid[R.WEIGHT] * r) + D
+    v = fixed + I
+    if form[R.WINDUP] == R.WINDUP_FREEZE:
+        # Freezing decides on the command it would have given, then gives the command without that step.
+        I = unwound(I, before, v, rho, 0.0, m, pid, form)  # noqa: E741
+        v = fixed + I
+    command = clip(v + rho, pid[R.LOW], pid[R.HIGH])
+    if form[R.WINDUP] == R.WINDUP_BACK:
+        I = unwound(I, before, v, rho, command, m, pid, form)  # noqa: E741
+    control[R.INTEGRAL, lane] = I
+    control[R.DERIVATIVE, lane] = D
+    control[R.ERROR_THEN, lane] = e
+    control[R.SLOPE_THEN, lane] = s
+    control[R.SETPOINT_THEN, lane] = r
+    control[R.WOULD, lane] = command
+
+
+@compiled
+def move(control: FloatArray, u: float, pid: FloatArray) -> None:
+    """Move the actuators towards their commands, at most one step each (3.4); keep the deviation from the record.
+
+    An actuator with a visible resolution q deviates by whole q, so that the recorded position comes back exactly.
+    """
+    step = pid[R.STEP]
+    q = pid[R.RESOLUTION]
+    for lane in range(control.shape[1]):
+        position = control[R.POSITION, lane]
+        command = control[R.COMMAND, lane]
+        moved = command if math.isinf(step) else position + clip(command - position, -step, step)
+        control[R.POSITION, lane] = moved
+        away = moved - u
+        control[R.DEVIATION, lane] = q * np.rint(away / q) if q > 0.0 else away

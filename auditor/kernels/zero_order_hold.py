@@ -1,0 +1,185 @@
+"""A continuous plant behind a zero-order hold with fractional delay, as a difference equation.
+
+The time unit is one base period. Two families: a chain of m equal lags T/m and one lag 1/p,
+``G = kv (1 + z s) e^{-theta s} / ((s + p)(T/m s + 1)^m)``, and an oscillator
+``G = kv w0 e^{-theta s} / (s² + 2 zeta w0 s + w0²)``. With q the backward shift the sampled plant is
+``q^{d+1} b(q) / a(q)``; a load at its input, not delayed, reaches y through ``load(q) / a(q)``, up to whole samples.
+
+The hold is exact: matrix exponentials of the plant with its input as one more state (Van Loan, IEEE TAC 23
+(1978) 395).
+"""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+
+from auditor.arrays import FloatArray
+from auditor.kernels.jit import compiled
+
+OSCILLATOR = 5
+"""Structure number of the oscillator; 0…4 are the lag chains with that many equal lags."""
+
+ZERO_DEAD_ZONE = 3.0
+"""Values of the zero's coordinate up to this mean "no zero"."""
+
+# Coordinates of a point in the space of plants and loads.
+LN_GAIN = 0  # ln kv
+LN_POLE = 1  # ln p; for the oscillator ln zeta
+LN_LAGS = 2  # ln T, the lags together; for the oscillator ln 1/w0
+DELAY = 3  # theta [base periods]
+LN_CORNER = 4  # ln(1 − phi) of the AR(1) load
+LN_WALK = 5  # ln g, power of the random walk against the AR(1) load
+LN_NOISE = 6  # ln R, power of the measurement noise, in units of kv²
+ZERO = 7  # zero with its dead zone
+COORDINATES = 8
+
+_TAYLOR_TERMS = 12
+
+
+@compiled
+def multiply(left: FloatArray, right: FloatArray, lower: bool, out: FloatArray) -> None:
+    """``out = left @ right`` for small square matrices, `lower` when both are lower triangular."""
+    n = len(left)
+    for i in range(n):
+        for j in range(n):
+            out[i, j] = 0.0
+        for k in range(i + 1 if lower else n):
+            factor = left[i, k]
+            for j in range(k + 1 if lower else n):
+                out[i, j] += factor * right[k, j]
+
+
+@compiled
+def exponential(M: FloatArray, t: float, lower: bool) -> FloatArray:
+    """e^{M t} of a small matrix by scaling, a Taylor polynomial in Horner's form, and squaring."""
+    n = len(M)
+    norm = 0.0
+    for i in range(n):
+        norm = max(norm, t * np.abs(M[i]).sum())
+    halvings = 0
+    while norm > 0.5:
+        norm *= 0.5
+        halvings += 1
+    X = M * (t / 2.0**halvings)
+    E = np.eye(n)
+    spare = np.empty((n, n))
+    for k in range(_TAYLOR_TERMS, 0, -1):
+        multiply(X, E, lower, spare)
+        for i in range(n):
+            for j in range(n):
+                E[i, j] = spare[i, j] / k
+            E[i, i] += 1.0
+    for _ in range(halvings):
+        multiply(E, E, lower, spare)
+        E, spare = spare, E
+    return E
+
+
+@compiled
+def zero_of(coordinate: float) -> float:
+    """Time constant of the zero, 0 inside the dead zone."""
+    if coordinate > ZERO_DEAD_ZONE:
+        return coordinate - ZERO_DEAD_ZONE
+    if coordinate < -ZERO_DEAD_ZONE:
+        return coordinate + ZERO_DEAD_ZONE
+    return 0.0
+
+
+@compiled
+def chain(x: FloatArray, m: int) -> tuple[FloatArray, FloatArray]:
+    """Lag chain behind its input: matrix (m + 2, m + 2), input first, hence lower triangular; output row."""
+    n = m + 2
+    p = math.exp(x[LN_POLE])
+    rate = m / math.exp(x[LN_LAGS])
+    M = np.zeros((n, n))
+    for i in range(1, m + 1):
+        M[i, i] = -rate
+        M[i, i - 1] = rate
+    M[m + 1, m + 1] = -p
+    M[m + 1, m] = 1.0
+    C = np.zeros(n)
+    C[m + 1] = 1.0
+    if m > 0:
+        z = zero_of(x[ZERO])
+        C[m + 1] = 1.0 - z * p
+        C[m] = z
+    return M, C * math.exp(x[LN_GAIN])
+
+
+@compiled
+def oscillator(x: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Oscillator behind its input: matrix (3, 3), input first; output row."""
+    w0 = math.exp(-x[LN_LAGS])
+    zeta = math.exp(x[LN_POLE])
+    M = np.zeros((3, 3))
+    M[1, 2] = 1.0
+    M[2, 1] = -w0 * w0
+    M[2, 2] = -2.0 * zeta * w0
+    M[2, 0] = w0
+    C = np.zeros(3)
+    C[1] = math.exp(x[LN_GAIN])
+    return M, C
+
+
+@compiled
+def denominator(x: FloatArray, m: int, E: FloatArray) -> FloatArray:
+    """a(q): the sampled poles are known for a chain; for the oscillator trace and determinant of its own part."""
+    if m == OSCILLATOR:
+        return np.array([1.0, -(E[1, 1] + E[2, 2]), E[1, 1] * E[2, 2] - E[1, 2] * E[2, 1]])
+    a = np.zeros(m + 2)
+    a[0] = 1.0
+    pole = math.exp(-math.exp(x[LN_POLE]))
+    for i in range(m + 1):
+        for j in range(i + 1, 0, -1):
+            a[j] -= pole * a[j - 1]
+        pole = math.exp(-m / math.exp(x[LN_LAGS]))
+    return a
+
+
+@compiled
+def numerator(a: FloatArray, E: FloatArray, C: FloatArray, first: FloatArray, second: FloatArray) -> FloatArray:
+    """b(q) = a(q) times the response to one pulse: state `first`, one period later E first + `second`, then free.
+
+    The input's own place in the states (index 0) is not used: it is zero after the pulse.
+    """
+    n = len(C)
+    state = first.copy()
+    following = np.empty(n)
+    b = np.zeros(n)
+    for lag in range(n):
+        response = 0.0
+        for i in range(1, n):
+            response += C[i] * state[i]
+        for j in range(n - lag):
+            b[lag + j] += a[j] * response
+        for i in range(1, n):
+            following[i] = second[i] if lag == 0 else 0.0
+            for j in range(1, n):
+                following[i] += E[i, j] * state[j]
+        state[:] = following
+    return b
+
+
+@compiled
+def difference_equation(x: FloatArray, m: int) -> tuple[int, FloatArray, FloatArray, FloatArray]:
+    """Return d, a(q), b(q) and load(q) of the plant at `x` with structure m; all three have the same length."""
+    lower = m != OSCILLATOR
+    M, C = chain(x, m) if lower else oscillator(x)
+    n = len(C)
+    d = int(math.floor(x[DELAY]))
+    f = x[DELAY] - d
+    early = exponential(M, f, lower)
+    late = exponential(M, 1.0 - f, lower)
+    whole = np.empty((n, n))
+    multiply(late, early, lower, whole)
+    # What enters during the first f of the period is carried on to its end.
+    carried = np.zeros(n)
+    for i in range(1, n):
+        for j in range(1, n):
+            carried[i] += late[i, j] * early[j, 0]
+    a = denominator(x, m, whole)
+    b = numerator(a, whole, C, late[:, 0].copy(), carried)
+    load = numerator(a, whole, C, whole[:, 0].copy(), np.zeros(n))
+    return d, a, b, load
