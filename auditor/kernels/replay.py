@@ -108,7 +108,7 @@ def watch(now: FloatArray, control: FloatArray, form: IntArray) -> None:
 
 @compiled
 def decide(
-    first: bool, since: IntArray, fired: IntArray, gap: IntArray, silence: IntArray, count: IntArray, updated: IntArray
+    first: bool, since: IntArray, fired: Any, gap: IntArray, silence: IntArray, count: IntArray, updated: IntArray
 ) -> None:
     """Guards around the rule: first sample, min_gap (the request stays latched), max_silence, then the rule."""
     for lane in range(len(since)):
@@ -160,29 +160,57 @@ def send_commands(updated: IntArray, control: FloatArray) -> None:
 @compiled
 def remember(now: FloatArray, sent: FloatArray, since: IntArray, updated: IntArray) -> None:
     """Keep what was sent, and count the samples since."""
-    for row in range(now.shape[0]):
-        for lane in range(now.shape[1]):
-            sent[row, lane] = now[row, lane] if updated[lane] == 1 else sent[row, lane]
+    for lane in range(len(since)):
+        if updated[lane] == 1:
+            for row in range(now.shape[0]):
+                sent[row, lane] = now[row, lane]
     for lane in range(len(since)):
         since[lane] = 1 if updated[lane] == 1 else since[lane] + 1
 
 
 @compiled
+def note(
+    u: float, now: FloatArray, updated: IntArray, control: FloatArray, count: IntArray, past: FloatArray, inputs: FloatArray,
+    out_y: FloatArray, out_u: FloatArray, out_updated: Any,
+) -> None:
+    """Write the sample down: row views of the histories and of the results."""
+    for lane in range(len(updated)):
+        away = control[R.DEVIATION, lane]
+        past[lane] = away
+        inputs[lane] = u + away
+        out_u[lane] = u + away
+        out_y[lane] = now[R.MEASUREMENT, lane]
+        out_updated[lane] = updated[lane]
+        count[R.SINCE_RUN, lane] += 1
+
+
+@compiled
+def recall(past: FloatArray, places: IntArray, acting: FloatArray) -> None:
+    """Fetch δ[k−d] and δ[k−d−1] of every lane; `places` are their slots and move on by one."""
+    ring = past.shape[0]
+    for lane in range(past.shape[1]):
+        late = places[lane]
+        later = late - 1 if late > 0 else ring - 1
+        acting[0, lane] = past[late, lane]
+        acting[1, lane] = past[later, lane]
+        places[lane] = late + 1 if late + 1 < ring else 0
+
+
+@compiled
 def advance(
-    k: int, A: FloatArray, B0: FloatArray, B1: FloatArray, delay: IntArray, past: FloatArray, dx: FloatArray, following: FloatArray
+    A: FloatArray, B0: FloatArray, B1: FloatArray, acting: FloatArray, dx: FloatArray, following: FloatArray
 ) -> None:
     """dx⁺ = A dx + B0 δ[k−d] + B1 δ[k−d−1] (2.1); δ is zero before the span."""
-    ring, lanes = past.shape
-    n = dx.shape[0]
+    n, lanes = dx.shape
     for i in range(n):
         for lane in range(lanes):
-            late = (k - delay[lane]) % ring
-            later = (k - delay[lane] - 1) % ring
-            following[i, lane] = B0[i, lane] * past[late, lane] + B1[i, lane] * past[later, lane]
+            following[i, lane] = B0[i, lane] * acting[0, lane] + B1[i, lane] * acting[1, lane]
         for j in range(n):
             for lane in range(lanes):
                 following[i, lane] += A[i, j, lane] * dx[j, lane]
-    dx[:, :] = following
+    for i in range(n):
+        for lane in range(lanes):
+            dx[i, lane] = following[i, lane]
 
 
 _F1, _F2, _F3 = types.float64[::1], types.float64[:, ::1], types.float64[:, :, ::1]
@@ -226,6 +254,8 @@ def replay_span(
     ring = delay.max() + 2
     past = np.zeros((ring, lanes))
     inputs = np.zeros((d_delay + 2, lanes))
+    places = (ring - delay) % ring
+    acting = np.zeros((2, lanes))
     dx = np.zeros((n, lanes))
     following = np.zeros((n, lanes))
     device = np.zeros((2 * dn, lanes))
@@ -238,8 +268,7 @@ def replay_span(
     count = np.zeros((R.COUNT_ROWS, lanes), dtype=np.int64)
     since = np.zeros(lanes, dtype=np.int64)
     updated = np.zeros(lanes, dtype=np.int64)
-    fired = np.zeros(lanes, dtype=np.int64)
-    out = np.zeros(lanes, dtype=np.uint8)
+    fired = np.zeros(lanes, dtype=np.uint8)
     for k in range(start, stop):
         first = k == start
         t = k - start
@@ -253,9 +282,7 @@ def replay_span(
         if predicting:
             predict(now, device, offset, dC)
         watch(now, control, form)
-        fires(now, sent, since, memory, settings, out)
-        for lane in range(lanes):
-            fired[lane] = out[lane]
+        fires(now, sent, since, memory, settings, fired)
         decide(first, since, fired, gap, silence, count, updated)
         if form[R.LINK_ACTUATOR] == 1:
             send_commands(updated, control)
@@ -266,13 +293,11 @@ def replay_span(
         remember(now, sent, since, updated)
         if not first:
             move(control, u[k], pid)
-        past[t % ring, :] = control[R.DEVIATION, :]
-        inputs[t % inputs.shape[0], :] = u[k] + control[R.DEVIATION, :]
-        out_y[k, :] = now[R.MEASUREMENT, :]
-        out_u[k, :] = u[k] + control[R.DEVIATION, :]
-        for lane in range(lanes):
-            out_updated[k, lane] = updated[lane]
-        advance(t, A, B0, B1, delay, past, dx, following)
+        note(
+            u[k], now, updated, control, count, past[t % ring], inputs[t % len(inputs)], out_y[k], out_u[k],
+            out_updated[k],
+        )  # fmt: skip
+        recall(past, places, acting)
+        advance(A, B0, B1, acting, dx, following)
         if predicting:
             advance_device(device, device_next, offset, inputs, t, u[start], dA, dB0, dB1, d_delay)
-        count[R.SINCE_RUN, :] += 1

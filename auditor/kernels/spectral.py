@@ -18,7 +18,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from auditor.arrays import FloatArray
+from auditor.arrays import ComplexArray, FloatArray
 from auditor.kernels import zero_order_hold as Z
 from auditor.kernels.jit import compiled
 
@@ -194,7 +194,7 @@ def crossings(re: FloatArray, im: FloatArray) -> int:
 
 
 @compiled
-def misfit(measured: FloatArray, work: FloatArray) -> FloatArray:
+def misfit(measured: FloatArray, work: FloatArray) -> tuple[float, float]:
     """Σ n E and Σ n over all bins."""
     yy, uu, re, im, n = measured[0], measured[1], measured[2], measured[3], measured[4]
     g_re, g_im, phi, out = work[_G_RE], work[_G_IM], work[_PHI], work[_LOAD]
@@ -236,3 +236,8 @@ def log_likelihood(x: FloatArray, m: int, entry: int, bins: Bins, work: FloatArr
     value = -count * math.log(total / count)
     value -= log_determinant(bins.measured[4], bins.closed, work[_PHI], work[_SENS])
     return (value if math.isfinite(value) else IMPOSSIBLE), peak
+
+
+def response_of(work: FloatArray) -> tuple[ComplexArray, FloatArray]:
+    """G and Phi from a workspace that `respond` filled."""
+    return work[_G_RE] + 1j * work[_G_IM], work[_PHI].copy()

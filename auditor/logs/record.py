@@ -11,9 +11,13 @@ from dataclasses import dataclass, field, replace
 from types import MappingProxyType
 
 import numpy as np
+import numpy.typing as npt
 
 from auditor.arrays import BoolArray, FloatArray, IntArray
 from auditor.logs.findings.base import Finding
+
+CAUSES: tuple[str, ...] = ("", "gap", "manual", "excluded", "bad value", "out of range")
+"""Why a sample may not be used, by the code in `Record.cause`; code 0 means that it may."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -71,6 +75,8 @@ class Record:
     inputs : tuple of InputFile
     zone : str
         IANA name (or "UTC") of the log's own clock.
+    cause : ndarray of int8, shape (N,), or None
+        Index into `CAUSES` of what makes a sample unusable; None where nobody recorded it.
     """
 
     period: float
@@ -94,6 +100,7 @@ class Record:
     rows: int = 0
     inputs: tuple[InputFile, ...] = ()
     zone: str = "UTC"
+    cause: npt.NDArray[np.int8] | None = None
 
     def __len__(self) -> int:
         return len(self.y)

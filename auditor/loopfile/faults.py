@@ -9,6 +9,7 @@ from types import MappingProxyType
 from typing import Any, get_args
 
 from pydantic import BaseModel, ValidationError
+from pydantic.fields import FieldInfo
 from pydantic_core import ErrorDetails
 
 from auditor.errors import Problem
@@ -38,13 +39,19 @@ _EXPECTED: Mapping[str, str] = MappingProxyType(
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Fault:
-    """One thing that is wrong at one key; the parts are those of `Problem`."""
+    """One thing that is wrong at one key; the parts are those of `Problem`.
+
+    `reads` are the other keys it rests on: it is not raised when one of them is at fault by itself.
+    `means` is the key that an unknown key most likely stands for.
+    """
 
     at: KeyPath
     what: str
     found: str = ""
     expected: str = ""
     do: str = ""
+    reads: tuple[KeyPath, ...] = ()
+    means: str | None = None
 
 
 def in_words(path: KeyPath) -> str:
@@ -114,50 +121,54 @@ def from_validation(
     owners : mapping of str to sequence of str
         For every key of the loop file, the tables that know it.
     """
-    return [_fault(detail, table, model, owners) for detail in error.errors()]
+    details = error.errors()
+    found = [_fault(detail, table, model, owners) for detail in details]
+    meant = {(*fault.at[:-1], fault.means) for fault in found if fault.means}
+    return [
+        fault
+        for fault, detail in zip(found, details, strict=True)
+        if not (detail["type"] == "missing" and fault.at in meant)
+    ]
 
 
 def _fault(detail: ErrorDetails, table: KeyPath, model: type[BaseModel], owners: Mapping[str, Sequence[str]]) -> Fault:
     at = (*table, *detail["loc"])
     kind, context = detail["type"], detail.get("ctx", {})
     if kind == "extra_forbidden":
-        return unknown_key(at, model_at(model, detail["loc"][:-1]), owners)
+        owner = model_at(model, detail["loc"][:-1])
+        return unknown_key(at, list(fields_of(owner)) if owner else [], owners)
     if kind == "missing":
         return _missing(at, model_at(model, detail["loc"][:-1]))
     expected = context.get("wanted") or _EXPECTED.get(kind, detail["msg"]).format(**context)
     do = str(context.get("do") or _hint(kind, detail["input"], str(expected)))
     what = str(context.get("what", "cannot be used")).strip()
-    return Fault(
-        at=at, what=f"{in_words(at)} {what}", found=as_written(detail["input"]), expected=str(expected), do=do
-    )
+    return Fault(at=at, what=f"{in_words(at)} {what}", found=as_written(detail["input"]), expected=str(expected), do=do)
 
 
-def unknown_key(at: KeyPath, model: type[BaseModel] | None, owners: Mapping[str, Sequence[str]]) -> Fault:
+def unknown_key(at: KeyPath, known: Sequence[str], owners: Mapping[str, Sequence[str]]) -> Fault:
     """Return the fault of a key that its table does not know, with the nearest key it does know."""
-    key, known = str(at[-1]), keys_of(model) if model else list(owners)
-    near = nearest(key, known)
-    home = [name for name in owners.get(key, ()) if name != in_words(at[:-1])]
-    if near is None and home:
-        do = f"move it to {' or '.join(home)}, or remove it"
-    elif near is not None:
-        do = f'did you mean "{near}"?' + (f" ({key} also exists in {' and '.join(home)})" if home else "")
-    else:
-        do = "remove it"
+    key = str(at[-1])
     place = f"[{in_words(at[:-1])}]" if len(at) > 1 else "the file's top level"
-    return Fault(at=at, what=f'unknown key "{key}" in {place}', found=key, expected=", ".join(known), do=do)
+    near = nearest(key, known)
+    home = " or ".join(name for name in owners.get(key, ()) if name != place)
+    do = f'did you mean "{near}"?' if near else f"move it to {home}, or remove it" if home else "remove it"
+    if near and home:
+        do += f" ({key} belongs to {home})"
+    what = f'unknown key "{key}" in {place}'
+    return Fault(at=at, what=what, found=key, expected=", ".join(known), do=do, means=near)
 
 
 def _missing(at: KeyPath, model: type[BaseModel] | None) -> Fault:
     key = str(at[-1])
-    field = {(f.alias or n): f for n, f in model.model_fields.items()}.get(key) if model else None
+    field = fields_of(model).get(key) if model else None
     example = field.examples[0] if field and field.examples else "…"
     expected = (field.description if field else None) or "a value"
     return Fault(at=at, what=f"{in_words(at)} is missing", expected=expected, do=f"add  {key} = {example}")
 
 
-def keys_of(model: type[BaseModel]) -> list[str]:
-    """Return the keys of a table as the file writes them."""
-    return [field.alias or name for name, field in model.model_fields.items()]
+def fields_of(model: type[BaseModel]) -> dict[str, FieldInfo]:
+    """Return the fields of a table by the key the file writes."""
+    return {field.alias or name: field for name, field in model.model_fields.items()}
 
 
 def model_at(model: type[BaseModel], loc: Sequence[str | int]) -> type[BaseModel] | None:
@@ -166,7 +177,7 @@ def model_at(model: type[BaseModel], loc: Sequence[str | int]) -> type[BaseModel
     for part in loc:
         if isinstance(part, int):
             continue
-        fields = {(f.alias or n): f for n, f in current.model_fields.items()} if current else {}
+        fields = fields_of(current) if current else {}
         current = _model_in(fields[part].annotation) if part in fields else None
     return current
 

@@ -4,9 +4,10 @@ ideal
     K, Ti, Td as they are.
 series
     u = K (1 + 1/(Ti s)) (1 + Td s) e, the interacting form:
-    K' = K (1 + Td/Ti), Ti' = Ti + Td, Td' = Ti Td / (Ti + Td). The derivative filter keeps its time, so N' = N Td'/Td.
-    A setpoint that does not pass the derivative (``derivative_on = "measurement"``) does not pass the factor (1 + Td/Ti)
-    of the proportional part either: β' = β / (1 + Td/Ti). With ``derivative_on = "error"``, β' = (β + Td/Ti)/(1 + Td/Ti).
+    K' = K (1 + Td/Ti), Ti' = Ti + Td, Td' = Ti Td / (Ti + Td). The derivative filter keeps its time: N' = N Td'/Td.
+    A setpoint that does not pass the derivative (``derivative_on = "measurement"``) does not pass the factor
+    (1 + Td/Ti) of the proportional part either: β' = β / (1 + Td/Ti).
+    With ``derivative_on = "error"`` it is β' = (β + Td/Ti) / (1 + Td/Ti).
 parallel
     u = K e + (1/Ti) ∫e + Td de/dt: `gain`, 1/`integral_time` and `derivative_time` are three gains that do not act on
     each other, and the sign of `gain` holds for all three: Ti' = abs(K) Ti, Td' = Td / abs(K).
@@ -18,7 +19,7 @@ A proportional band PB [%] over a measurement range is K = (100 / PB) (actuator 
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from auditor.loop import ControllerSettings
 from auditor.loopfile.schema import ActuatorTable, ControllerTable
@@ -68,33 +69,35 @@ def _gain(table: ControllerTable, actuator: ActuatorTable) -> float:
     return -gain if table.action == "direct" else gain
 
 
-def to_ideal(form: str, terms: Terms) -> Terms:
+def to_ideal(form: str, terms: Terms, derivative_on: str = "measurement") -> Terms:
     """Convert `terms` from `form` to the ideal form (formulas in the module's text)."""
     if form == "parallel":
         size = abs(terms.gain)
-        return Terms(
-            terms.gain,
-            terms.integral_time * size,
-            terms.derivative_time / size,
-            terms.setpoint_weight,
-            terms.derivative_filter,
-        )
-    return _from_series(terms) if form == "series" else terms
+        return replace(terms, integral_time=terms.integral_time * size, derivative_time=terms.derivative_time / size)
+    return _from_series(terms, derivative_on) if form == "series" else terms
 
 
-def _from_series(terms: Terms) -> Terms:
-    ti, td = terms.integral_time, terms.derivative_time
-    share = td / ti
+def _from_series(terms: Terms, derivative_on: str) -> Terms:
+    share = terms.derivative_time / terms.integral_time
     factor = 1.0 + share
-    return Terms(terms.gain * factor, ti + td, td / factor, terms.setpoint_weight / factor, terms.derivative_filter / factor)
+    on_setpoint = terms.setpoint_weight + (share if derivative_on == "error" else 0.0)
+    return Terms(
+        gain=terms.gain * factor,
+        integral_time=terms.integral_time + terms.derivative_time,
+        derivative_time=terms.derivative_time / factor,
+        setpoint_weight=on_setpoint / factor,
+        derivative_filter=terms.derivative_filter / factor,
+    )
+
+
+def ideal_terms(table: ControllerTable, actuator: ActuatorTable) -> Terms:
+    """Return the terms in the ideal form; the table must be free of faults."""
+    return to_ideal(table.form, stated(table, actuator), table.derivative_on)
 
 
 def ideal_settings(table: ControllerTable, actuator: ActuatorTable) -> ControllerSettings:
     """Return the controller in the ideal form; the table must be free of faults."""
-    terms = to_ideal(table.form, stated(table, actuator))
-    weight = terms.setpoint_weight
-    if table.form == "series" and table.derivative_on == "error":
-        weight = _weight_on_error(table.setpoint_weight, stated(table, actuator))
+    terms = ideal_terms(table, actuator)
     return ControllerSettings(
         kind=table.kind,
         gain=terms.gain,
@@ -106,7 +109,7 @@ def ideal_settings(table: ControllerTable, actuator: ActuatorTable) -> Controlle
         tracking_time=table.tracking_time,
         derivative_on=table.derivative_on,
         derivative_filter=terms.derivative_filter,
-        setpoint_weight=weight,
+        setpoint_weight=terms.setpoint_weight,
         error_deadband=table.error_deadband,
         bias=table.bias,
     )
@@ -123,31 +126,27 @@ def gains_in_words(table: ControllerTable, actuator: ActuatorTable, unit: str) -
         Unit of the measurement.
     """
     per = f" {actuator.unit or '1'}/{unit or '1'}" if actuator.unit or unit else ""
-    settings = ideal_settings(table, actuator)
-    ideal = Terms(
-        settings.gain,
-        math.inf if settings.integral_time is None else settings.integral_time,
-        settings.derivative_time,
-        settings.setpoint_weight,
-        settings.derivative_filter,
-    )
+    ideal = ideal_terms(table, actuator)
     words = f"gain {number(ideal.gain, 4)}{per}, {_times(ideal)}"
     if table.form == "ideal":
         return f"Ideal form: {words}."
     first = stated(table, actuator)
+    times = _parallel_gains(first) if table.form == "parallel" else _times(first)
     return (
-        f"Stated in the {table.form} form: gain {number(first.gain, 4)}{per}, {_stated_times(table.form, first)}. "
+        f"Stated in the {table.form} form: gain {number(first.gain, 4)}{per}, {times}. "
         f"Converted to the ideal form: {words}, setpoint weight {number(ideal.setpoint_weight)}, "
         f"derivative filter {number(ideal.derivative_filter)}."
     )
 
 
 def _times(terms: Terms) -> str:
-    integral = "no integral action" if math.isinf(terms.integral_time) else f"integral time {duration(terms.integral_time)}"
+    if math.isinf(terms.integral_time):
+        integral = "no integral action"
+    else:
+        integral = f"integral time {duration(terms.integral_time)}"
     return f"{integral}, derivative time {duration(terms.derivative_time)}"
 
 
-def _stated_times(form: str, terms: Terms) -> str:
-    if form != "parallel":
-        return _times(terms)
-    return f"integral gain {number(1.0 / terms.integral_time, 4)} per s, derivative gain {number(terms.derivative_time, 4)} s"
+def _parallel_gains(terms: Terms) -> str:
+    integral = number(1.0 / terms.integral_time, 4)
+    return f"integral gain {integral} (unit of the gain per s), derivative gain {number(terms.derivative_time, 4)} s"

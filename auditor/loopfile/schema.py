@@ -122,11 +122,9 @@ class ModeTable(Table):
 class SignalsTable(Table):
     """`[signals]`."""
 
-    measurement: SignalTable = Field(
-        description="the controlled signal", examples=['{ column = "level", unit = "m" }']
-    )
+    measurement: SignalTable = Field(description="the controlled signal", examples=['{ column = "level", unit = "m" }'])
     setpoint: SetpointTable = Field(
-        description="a column or a constant", examples=['{ column = "target" }  or  { value = 2.0 }']
+        description="a column or a constant", examples=['{ column = "target", unit = "m" }']
     )
     actuator: ActuatorTable = Field(
         description="what acts on the process", examples=['{ column = "gate", unit = "%", low = 0, high = 100 }']
@@ -191,9 +189,7 @@ class ChannelTable(Table):
 class FailsafeTable(Table):
     """`[failsafe]`."""
 
-    after: Annotated[Duration, Field(gt=0)] = Field(
-        description="the silence after which it acts", examples=['"30min"']
-    )
+    after: Annotated[Duration, Field(gt=0)] = Field(description="the silence after which it acts", examples=['"30min"'])
     action: FailAction = Field(description='"hold" or an actuator value', examples=['"hold"'])
 
 

@@ -1,4 +1,4 @@
-"""The settings of a `[[rules]]` table: scalars, lists and log-spaced ranges, all of them tuples of numbers in the end."""
+"""The settings of a `[[rules]]` table: scalars, lists and log-spaced ranges, all of them tuples in the end."""
 
 from __future__ import annotations
 
@@ -19,7 +19,7 @@ Values: TypeAlias = tuple[float, ...]
 GUARDS = ("max_silence", "min_gap")
 SPAN_KEYS = ("from", "to", "count")
 LARGEST_COUNT = 10_000
-_EXPECTED = "a number, a duration such as \"60s\", a list of them, or { from = 0.002, to = 0.1, count = 12 }"
+_EXPECTED = 'a number, a duration such as "60s", a list of them, or { from = 0.002, to = 0.1, count = 12 }'
 
 
 @dataclass(frozen=True, slots=True)
@@ -99,10 +99,10 @@ def _span(name: str, written: Mapping[str, Any], timed: bool, at: KeyPath) -> Se
         )
     low, high = _number(written.get("from"), timed), _number(written.get("to"), timed)
     count = written.get("count")
-    whole = isinstance(count, int) and not isinstance(count, bool) and 2 <= count <= LARGEST_COUNT
-    if low is None or high is None or not 0 < low < high or not whole:
+    whole = count if isinstance(count, int) and not isinstance(count, bool) else 0
+    if low is None or high is None or not 0 < low < high or not 2 <= whole <= LARGEST_COUNT:
         return Setting(name, fault=_bad_span(written, at))
-    values = np.geomspace(low, high, count)
+    values = np.geomspace(low, high, whole)
     values[0], values[-1] = low, high
     return Setting(name, tuple(float(value) for value in values))
 
@@ -132,9 +132,7 @@ def _unusable(key: str, written: Any, at: KeyPath, fixed: tuple[str, ...]) -> Fa
     do = f'did you mean "{near}"?' if near and near != key else "correct the value"
     if isinstance(written, str) and _is_plain_number(written):
         do = "write the number without quotes"
-    return Fault(
-        at=at, what=f"{in_words(at)} cannot be used", found=as_written(written), expected=_EXPECTED, do=do
-    )
+    return Fault(at=at, what=f"{in_words(at)} cannot be used", found=as_written(written), expected=_EXPECTED, do=do)
 
 
 def _is_plain_number(text: str) -> bool:

@@ -44,7 +44,7 @@ def _not_blank(value: str) -> str:
 def _folder_name(value: str) -> str:
     _not_blank(value)
     if any(sign in '/\\:*?"<>|' or ord(sign) < 32 for sign in value) or set(value) <= {"."}:
-        _refuse("cannot name a folder", "a name without / \\ : * ? \" < > |", "use letters, digits, spaces and -")
+        _refuse("cannot name a folder", 'a name without / \\ : * ? " < > |', "use letters, digits, spaces and -")
     return value
 
 

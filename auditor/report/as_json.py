@@ -18,6 +18,7 @@ from auditor.logs.findings.base import Finding
 from auditor.logs.record import Record, Span
 from auditor.replay import Measures, Replay
 from auditor.report.content import FlagCount, accepted_rms_error, flag_counts
+from auditor.report.parameters import lag_intervals, parameter_interval
 from auditor.report.times import utc
 
 FORMAT, VERSION = "auditor/audit", 1
@@ -66,7 +67,7 @@ def finite(value: Any) -> Any:
         return int(value)
     if isinstance(value, (float, np.floating)):
         return float(value) if math.isfinite(value) else None
-    return value
+    return value.encode("utf-8", "replace").decode("utf-8") if isinstance(value, str) else value
 
 
 def measures_object(measures: Measures | None) -> Json | None:
@@ -243,30 +244,6 @@ def _spread(model: Model | None) -> Json:
     return {name: parameter_interval(model, name) for name in ("gain", "gain_per_s", "delay_s")} | {
         "time_constants_s": lag_intervals(model)
     }
-
-
-def parameter_interval(model: Model | None, name: str) -> tuple[float, float] | None:
-    """5–95 % of one number of the plant over the draws that have it, None when none has."""
-    drawn = [getattr(p, name) for p in model.plants] if model else []
-    known = [float(value) for value in drawn if value is not None]
-    return _five_to_ninety_five(known)
-
-
-def lag_intervals(model: Model | None) -> list[tuple[float, float]]:
-    """5–95 % of every lag over the draws with as many lags as the likeliest, longest first [s]."""
-    if model is None:
-        return []
-    count = len(model.likeliest.time_constants_s)
-    alike = [p.time_constants_s for p in model.plants if len(p.time_constants_s) == count]
-    found = [_five_to_ninety_five([lags[i] for lags in alike]) for i in range(count)]
-    return [interval for interval in found if interval is not None]
-
-
-def _five_to_ninety_five(values: list[float]) -> tuple[float, float] | None:
-    if not values:
-        return None
-    low, high = np.quantile(values, (0.05, 0.95))
-    return float(low), float(high)
 
 
 def _recommendation(audit: Audit) -> Json:

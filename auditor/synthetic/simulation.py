@@ -121,9 +121,10 @@ def simulate(
             wanted = memory.command
         else:
             memory = None
-        u[k] = position = _rounded(moved(position, wanted, controller.max_rate * period), u_step)
+        position = moved(position, wanted, controller.max_rate * period)
+        u[k] = acting = _rounded(position, u_step)
         # The input of sample k arrives d samples later (2.1).
-        inputs[k + d + 1] = plant.drive(position)
+        inputs[k + d + 1] = plant.drive(acting)
         x = A @ x + B0 * inputs[k + 1] + B1 * inputs[k] + push[k]
     return Simulation(y=read_only(y), u=read_only(u), r=read_only(setpoint.astype(float)), updated=read_only(updated))
 

@@ -1,0 +1,106 @@
+"""Words a header may use, in English, German, Dutch, French and Spanish; only ever the second reason for a guess."""
+
+from __future__ import annotations
+
+import re
+import unicodedata
+from collections.abc import Mapping, Sequence
+from types import MappingProxyType
+
+# Endings and abbreviations stand as whole words, stems (four letters and more) also at the start of a word.
+WORDS: Mapping[str, Sequence[str]] = MappingProxyType(
+    {
+        "time": (
+            "time timestamp stamp date datetime t ts clock zeit zeitstempel zeitpunkt datum uhrzeit tijd tijdstip "
+            "tijdstempel heure horodatage temps hora fecha tiempo utc epoch"
+        ).split(),
+        "setpoint": (
+            "setpoint set sp target reference ref setp wsp sollwert soll fuhrungsgrosse vorgabe streefwaarde streef "
+            "gewenst instelwaarde setwaarde richtwaarde sw consigne cons objectif consigna referencia deseado r"
+        ).split(),
+        "measurement": (
+            "measurement measured process actual pv istwert ist messwert meting gemeten mesure mesuree medida medicion "
+            "valor y"
+        ).split(),
+        "quantity": (
+            "level flow pressure temperature temp oxygen head pegel fullstand wasserstand niveau durchfluss druck "
+            "temperatur vorlauf sauerstoff peil waterstand debiet druk temperatuur zuurstof debit pression oxygene "
+            "nivel caudal presion temperatura oxigeno"
+        ).split(),
+        "actuator": (
+            "actuator valve gate output out op co mv cv position pos speed opening drive pump control manipulated "
+            "stellgrosse stellwert stellung ventil klappe schieber ausgang drehzahl pumpe reglerausgang klep schuif "
+            "uitgang uitsturing stand toerental pomp regelklep stuursignaal vanne sortie commande ouverture vitesse "
+            "pompe position valvula salida compuerta velocidad bomba apertura mando u"
+        ).split(),
+        "mode": (
+            "mode auto automatic manual state status betriebsart modus hand automatik bedrijfsmodus regime "
+            "marche etat modo estado automatico"
+        ).split(),
+        "quality": "quality qual status qualitat gute kwaliteit qualite calidad".split(),
+        "index": "index idx nr no id row record line satz zeile regel ligne fila unnamed".split(),
+    }
+)
+AUTOMATIC = frozenset(
+    "auto automatic automatik automatisch automatique automatico aut a automat cascade cas kaskade regelung on ein".split()
+)
+_UNITS = (
+    "m mm cm km m3/s m³/s m3/h m³/h m3/d l/s l/min l/h % bar mbar pa kpa mpa hpa psi k c f °c °f degc degf rpm 1/min "
+    "u/min tr/min hz s min h a ma v mv kv w kw mw kwh mg/l mg/l g/l ppm mnap mm/s m/s nm3/h kg/s kg/h t/h ph ntu ms/cm "
+    "µs/cm mwc mwk mca dbar -"
+).split()
+UNITS = frozenset(_UNITS)
+_ENDINGS: Mapping[str, str] = MappingProxyType(
+    {
+        "m3s": "m3/s", "m3h": "m3/h", "m3ph": "m3/h", "ls": "l/s", "lps": "l/s", "lpm": "l/min", "lmin": "l/min",
+        "pct": "%", "percent": "%", "prozent": "%", "procent": "%", "degc": "°C", "celsius": "°C", "bar": "bar",
+        "mbar": "mbar", "kpa": "kPa", "mpa": "MPa", "pa": "Pa", "rpm": "rpm", "hz": "Hz", "mm": "mm", "cm": "cm", "m": "m",
+        "mgl": "mg/l", "ma": "mA", "kw": "kW", "c": "°C",
+    }
+)  # fmt: skip
+_BRACKETED = re.compile(r"[\[({<]\s*([^\])}>]{1,12}?)\s*[\])}>]\s*$")
+_SLASHED = re.compile(r"\s+(?:/|in)\s+(\S{1,8})$")
+_EDGE = re.compile(r"(?<=[a-zà-ÿ])(?=[A-Z])|(?<=[A-Z])(?=[A-Z][a-zà-ÿ])|[^A-Za-zÀ-ÿ0-9]+")
+
+
+def tokens(name: str) -> list[str]:
+    """Return the words of a header in lower case and without accents: ``LevelSP_pool7`` → level, sp, pool7."""
+    parts = [part for part in _EDGE.split(name) if part]
+    return [plain(part) for part in parts]
+
+
+def plain(word: str) -> str:
+    """Return a word in lower case, without accents."""
+    decomposed = unicodedata.normalize("NFKD", word.lower().replace("ß", "ss"))
+    return "".join(sign for sign in decomposed if not unicodedata.combining(sign))
+
+
+def names(header: str, role: str) -> str | None:
+    """Return the word of `header` that speaks for `role` (a key of `WORDS`), None when there is none.
+
+    A short word must stand alone; a stem of four letters or more may also begin or end a longer word, as German and
+    Dutch put words together. The last matching word counts most in a name, so it is looked at first.
+    """
+    known = WORDS[role]
+    for token in reversed(tokens(header)):
+        bare = token.rstrip("0123456789") or token
+        if token in known or bare in known:
+            return token
+        if any(len(word) >= 4 and (bare.startswith(word) or bare.endswith(word)) for word in known):
+            return token
+    return None
+
+
+def unit_of(header: str) -> str:
+    """Return the unit a header states, as in ``level [m]``, ``flow_m3h``, ``Druck in bar``; empty when it states none."""
+    for pattern in (_BRACKETED, _SLASHED):
+        match = pattern.search(header)
+        if match and is_unit(match[1]):
+            return match[1].strip()
+    parts = re.split(r"[_\s.]+", header.strip())
+    return _ENDINGS.get(plain(parts[-1]), "") if len(parts) > 1 else ""
+
+
+def is_unit(text: str) -> bool:
+    """Return True for text that is a unit of measurement, with or without brackets around it."""
+    return text.strip().strip("[](){}<>").strip().lower() in UNITS

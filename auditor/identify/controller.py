@@ -1,0 +1,234 @@
+"""The controller of the loop: from its file, from the log, and when from neither.
+
+`recover_controller` says which sample of the actuator belongs to which error, what the controller's settings are, and
+whether the actuator is explained by them at all. What follows from it is in `residual` (null replay) and `causes`.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from auditor.controllers.pid import INTEGRALS, Pid
+from auditor.errors import Problem
+from auditor.identify import refusals, thresholds
+from auditor.identify.alignment import LAGS, Match, best_match, lay_out, setpoint_moves, shift_actuator
+from auditor.identify.gains import coefficients_of, controller_of, roundest, stated_controller, terms_of
+from auditor.identify.limits import saturates
+from auditor.identify.regression import Fit, Signals, measured, read_signals, residual_of
+from auditor.identify.residual import anti_windup_of
+from auditor.logs.record import Record
+from auditor.loop import ControllerSettings, Loop
+from auditor.text import duration, number, percent
+
+
+@dataclass(frozen=True, eq=False, slots=True, kw_only=True)
+class Recovery:
+    """The controller that made the record.
+
+    Attributes
+    ----------
+    controller : Pid
+        With the record's limits; not to be used when `usable` is False.
+    source : str
+        "file" or "log".
+    skew_samples : int
+        Samples by which the actuator's column is late (+) or early (−); give it to `shift_actuator`.
+    relative_residual : float
+        What the controller leaves of the actuator's own movement: 0 for an exact log, 1 for nothing explained.
+    lag_table : tuple of (int, float)
+        Relative residual at every shift tried, for the shift found on the same terms.
+    reasons : tuple of str
+        What people should know about how it was found.
+    usable : bool
+    refusal : Problem or None
+        What to tell when it is not usable.
+    own_law : bool
+        True when the actuator is a static function of the measurement and the setpoint never moves: the log then
+        holds the controller's law and nothing that tells about the plant.
+    bias : float or None
+        Actuator at zero error, of a controller without integral action [actuator unit].
+    """
+
+    controller: Pid
+    source: str
+    skew_samples: int
+    relative_residual: float
+    lag_table: tuple[tuple[int, float], ...]
+    reasons: tuple[str, ...] = ()
+    usable: bool = True
+    refusal: Problem | None = None
+    own_law: bool = False
+    bias: float | None = None
+
+
+def recover_controller(record: Record, loop: Loop) -> Recovery:
+    """Find the controller, its integral form and anti-windup, and the skew of the actuator's column.
+
+    Parameters
+    ----------
+    record : Record
+        As logged; the actuator is not shifted here.
+    loop : Loop
+        Gains come from its file where it has a controller; what the file leaves open is found in the record.
+
+    Returns
+    -------
+    Recovery
+        With `usable` False and a `refusal` when nothing explains the actuator.
+    """
+    settings = loop.controller
+    signals = read_signals(record, settings.error_deadband if settings else 0.0)
+    trouble = refusals.before_fitting(record, signals)
+    match = None
+    if trouble is None:
+        match = best_match(signals, saturates=saturates(record), quantum=record.u_quantum or 0.0)
+    if settings is not None:
+        return _from_file(record, signals, settings, match)
+    if match is None:
+        return _refused(record, trouble or refusals.too_few_rows(record))
+    return _from_log(record, signals, match)
+
+
+def _refused(record: Record, refusal: Problem) -> Recovery:
+    nothing = Pid(gain=0.0, low=record.low, high=record.high, max_rate=record.max_rate)
+    return Recovery(
+        controller=nothing,
+        source="log",
+        skew_samples=0,
+        relative_residual=math.inf,
+        lag_table=(),
+        reasons=(refusal.what,),
+        usable=False,
+        refusal=refusal,
+    )
+
+
+def _from_log(record: Record, signals: Signals, match: Match) -> Recovery:
+    controller, by_roundness = roundest(match, record)
+    refusal = refusals.after_fitting(record, signals, match)
+    if refusal is None:
+        controller = anti_windup_of(shift_actuator(record, match.lag), controller)
+    own_law = match.terms.kind == "P" and not setpoint_moves(signals) and match.fit.relative < thresholds.OWN_LAW
+    reasons = [_how_found(match, record), *_skew_words(match.lag)]
+    if by_roundness:
+        reasons.append(
+            f"the log cannot tell the integral forms apart; '{controller.integral}' is the one with round settings"
+        )
+    if own_law:
+        reasons.append(refusals.OWN_LAW_WORDS)
+    if refusal is not None:
+        reasons.append(refusal.what)
+    return Recovery(
+        controller=controller,
+        source="log",
+        skew_samples=match.lag,
+        relative_residual=match.fit.relative,
+        lag_table=match.table,
+        reasons=tuple(reasons),
+        usable=refusal is None,
+        refusal=refusal,
+        own_law=own_law,
+        bias=_bias(record, controller, match.lag),
+    )
+
+
+def _from_file(record: Record, signals: Signals, settings: ControllerSettings, match: Match | None) -> Recovery:
+    stated = stated_controller(settings, record)
+    forms = (settings.integral,) if settings.integral else ("backward", *(f for f in INTEGRALS if f != "backward"))
+    levels = match.levels if match is not None else record.u_quantum is not None
+    tried = {
+        (lag, form): _left_by(signals, replace(stated, integral=form), lag, record, levels=levels)
+        for lag in LAGS
+        for form in forms
+    }
+    lag, form = _first_clearly_best({key: fit.relative for key, fit in tried.items()})
+    reasons: list[str] = []
+    if match is not None and _log_says_otherwise(tried[lag, form], match):
+        reasons.append(_disagreement(record, match))
+        lag = match.lag
+        form = _first_clearly_best({(lag, f): tried[lag, f].relative for f in forms})[1]
+    chosen = replace(stated, integral=form)
+    if settings.anti_windup is None:
+        chosen = anti_windup_of(shift_actuator(record, lag), chosen)
+    reasons = [f"the controller is the loop file's; {_left_words(tried[lag, form].relative)}", *_skew_words(lag), *reasons]
+    own_law = math.isinf(chosen.integral_time) and chosen.derivative_time == 0 and not setpoint_moves(signals)
+    own_law = own_law and tried[lag, form].relative < thresholds.OWN_LAW
+    return Recovery(
+        controller=chosen,
+        source="file",
+        skew_samples=lag,
+        relative_residual=tried[lag, form].relative,
+        lag_table=tuple(sorted((at, fit.relative) for (at, f), fit in tried.items() if f == form)),
+        reasons=(*reasons, refusals.OWN_LAW_WORDS) if own_law else tuple(reasons),
+        own_law=own_law,
+        bias=_bias(record, chosen, lag),
+    )
+
+
+def _left_by(signals: Signals, controller: Pid, lag: int, record: Record, *, levels: bool) -> Fit:
+    """What given settings leave of the actuator at one lag."""
+    terms = terms_of(controller, record.period)
+    design = lay_out(signals, lag, terms, levels=levels)
+    coefficients = coefficients_of(controller, record.period)
+    if len(design.target) == 0:
+        return Fit(coefficients=coefficients, residual=np.zeros(0), scale=math.inf, relative=math.inf, robust=False)
+    residual = residual_of(design, coefficients, np.ones(len(design.target)))
+    return measured(design, coefficients, residual, robust=saturates(record))
+
+
+def _first_clearly_best(left: dict[tuple[int, str], float]) -> tuple[int, str]:
+    """Return the first key whose residual no later one betters clearly; keys come nearest lag and usual form first."""
+    keys: Iterable[tuple[int, str]] = iter(left)
+    best = next(iter(left))
+    for key in keys:
+        if left[key] < thresholds.LAG_BETTER * left[best]:
+            best = key
+    return best
+
+
+def _log_says_otherwise(stated: Fit, match: Match) -> bool:
+    """True when the log's own gains explain clearly more than the file's."""
+    return stated.relative > thresholds.EXACT and match.fit.relative < thresholds.CAUSE_HALVES * stated.relative
+
+
+def _disagreement(record: Record, match: Match) -> str:
+    own = controller_of(match, record, "backward")
+    time = "none" if math.isinf(own.integral_time) else duration(own.integral_time)
+    return (
+        f"the log does not agree with the file's gains: it shows gain {number(own.gain, 4)}, integral time {time} "
+        f"(backward form), which leaves {percent(match.fit.relative, 2)} of the actuator's movement"
+    )
+
+
+def _how_found(match: Match, record: Record) -> str:
+    """Say by which regression the controller was found."""
+    kind, side = match.terms.kind, "levels" if match.levels else "differences"
+    norm = "least absolute residuals" if match.fit.robust else "least squares"
+    return f"{kind} controller found in the log from {side} by {norm}; {_left_words(match.fit.relative)}"
+
+
+def _left_words(relative: float) -> str:
+    if relative < thresholds.EXACT:
+        return "it explains the actuator exactly"
+    return f"it leaves {percent(relative, 2)} of the actuator's movement"
+
+
+def _skew_words(lag: int) -> list[str]:
+    if lag == 0:
+        return []
+    side = "late" if lag > 0 else "early"
+    return [f"the actuator's column is {abs(lag)} sample{'s' * (abs(lag) > 1)} {side} against the measurement"]
+
+
+def _bias(record: Record, controller: Pid, lag: int) -> float | None:
+    """Median of u − K e, for a controller without integral action."""
+    if math.isfinite(controller.integral_time) or controller.gain == 0.0:
+        return None
+    shifted = shift_actuator(record, lag)
+    inside = shifted.in_span & shifted.valid
+    e = record.e + (controller.setpoint_weight - 1.0) * record.r
+    return float(np.median((shifted.u - controller.gain * e)[inside])) if inside.any() else None

@@ -1,0 +1,247 @@
+"""The controller's equation as a regression on the record.
+
+Letters: e error, y measurement, r setpoint, u actuator, k sample, h base period. With S the running sum of e and x the
+filtered derivative signal, ``x[k] = a x[k−1] + s[k] − s[k−1]``, a = Tf/(Tf + h), the controller is
+
+    u[k + lag] = constant + K e[k] + Ki S[k] + g x[k] + w r[k]        levels, one constant per unbroken stretch
+    u[k + lag] − u[k + lag − 1] = the differences of the right side    differences
+
+K is the gain of the backward form, Ki = K h / Ti, g = K Td / (Tf + h), w = K (β − 1). The forward and the trapezoid
+form are the same equation with K + Ki and K + Ki / 2 in place of K.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import TypeVar
+
+import numpy as np
+from scipy.signal import lfilter
+
+from auditor.arrays import BoolArray, FloatArray, IntArray
+from auditor.identify.limits import at_limit, slewing
+from auditor.logs.record import Record
+
+PASSES = 30
+"""Reweightings of the least-absolute fit."""
+
+_SETTLED = 1e-9
+"""What may be left of the unknown derivative state at the beginning of a span before its rows are used."""
+
+
+_Flags = TypeVar("_Flags", BoolArray, IntArray)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Terms:
+    """What a candidate controller is made of; `derivative` is "measurement", "error" or None, `pole` its a."""
+
+    integral: bool = False
+    derivative: str | None = None
+    weight: bool = False
+    pole: float = 0.0
+
+    @property
+    def count(self) -> int:
+        """Coefficients, the pole included."""
+        return 1 + self.integral + 2 * (self.derivative is not None) + self.weight
+
+    @property
+    def kind(self) -> str:
+        """Name people use."""
+        return ("PI" if self.integral else "P") + ("D" if self.derivative else "")
+
+
+@dataclass(frozen=True, eq=False, slots=True, kw_only=True)
+class Design:
+    """One regression: columns (n, p) in the order K, Ki, g, w; target (n,); stretch (n,) or None for differences."""
+
+    columns: FloatArray
+    target: FloatArray
+    stretch: IntArray | None
+
+
+@dataclass(frozen=True, eq=False, slots=True, kw_only=True)
+class Fit:
+    """Coefficients, residual (n,), its scale (rms, or mean absolute value when robust) and the scale over the target's."""
+
+    coefficients: FloatArray
+    residual: FloatArray
+    scale: float
+    relative: float
+    robust: bool
+
+    @property
+    def rows(self) -> int:
+        """Number of rows used."""
+        return len(self.residual)
+
+    @property
+    def exact(self) -> bool:
+        """True when nothing but floating point is left (u − u of neighbours loses some of its 16 digits)."""
+        return self.relative < 1e-9
+
+
+@dataclass(frozen=True, eq=False, slots=True, kw_only=True)
+class Signals:
+    """The record as the regression sees it; `free` is False at limits, `moving` also while slewing.
+
+    Attributes
+    ----------
+    e, y, r, u : ndarray, shape (N,)
+        `e` with the controller's own dead-band.
+    good, free, moving : ndarray of bool, shape (N,)
+    age : ndarray of int, shape (N,)
+        Samples since the span began, −1 outside.
+    stretch : ndarray of int, shape (N,)
+        Number of the unbroken stretch away from limits.
+    """
+
+    e: FloatArray
+    y: FloatArray
+    r: FloatArray
+    u: FloatArray
+    good: BoolArray
+    free: BoolArray
+    moving: BoolArray
+    age: IntArray
+
+
+def read_signals(record: Record, deadband: float = 0.0) -> Signals:
+    """Prepare a record for regressions."""
+    age = np.full(len(record), -1, dtype=np.int64)
+    for span in record.spans:
+        age[span.start : span.stop] = np.arange(len(span))
+    good = record.valid & (age >= 0)
+    free = good & ~at_limit(record)
+    e = np.where(np.abs(record.e) <= deadband, 0.0, record.e) if deadband > 0 else record.e
+    e, y, r, u = (np.where(good, x, 0.0) for x in (e, record.y, record.r, record.u))
+    return Signals(e=e, y=y, r=r, u=u, good=good, free=free, moving=free & ~slewing(record), age=age)
+
+
+def derivative_state(signals: Signals, terms: Terms) -> FloatArray:
+    """x of every sample, zero at the beginning of each span, shape (N,)."""
+    s = signals.e if terms.derivative == "error" else -signals.y
+    x = np.zeros(len(s))
+    for start, stop in _spans(signals.age):
+        x[start:stop] = lfilter([1.0], [1.0, -terms.pole], np.diff(s[start:stop], prepend=s[start]))
+    return x
+
+
+def difference_rows(signals: Signals, lag: int, terms: Terms) -> IntArray:
+    """Samples k whose equation in differences holds: neither actuator sample at a limit, all inside one span."""
+    now, before = _shifted(signals.moving, lag), _shifted(signals.moving, lag - 1)
+    oldest = max(1, 1 - lag) + _settling(terms)
+    same = _shifted(signals.age, lag) - signals.age == lag
+    return np.flatnonzero(
+        now & before & same & _shifted(signals.good, 0) & _shifted(signals.good, -1) & (signals.age >= oldest)
+    )
+
+
+def level_rows(signals: Signals, lag: int, terms: Terms) -> IntArray:
+    """Samples k whose equation in levels holds."""
+    same = _shifted(signals.age, lag) - signals.age == lag
+    usable = _shifted(signals.moving, lag) & signals.good & same
+    return np.flatnonzero(usable & (signals.age >= _settling(terms)))
+
+
+def difference_design(signals: Signals, lag: int, terms: Terms, rows: IntArray) -> Design:
+    """Lay out the regression in differences."""
+    step = [signals.e[rows] - signals.e[rows - 1]]
+    if terms.integral:
+        step.append(signals.e[rows])
+    if terms.derivative is not None:
+        x = derivative_state(signals, terms)
+        step.append(x[rows] - x[rows - 1])
+    if terms.weight:
+        step.append(signals.r[rows] - signals.r[rows - 1])
+    target = signals.u[rows + lag] - signals.u[rows + lag - 1]
+    return Design(columns=np.stack(step, axis=1), target=target, stretch=None)
+
+
+def level_design(signals: Signals, lag: int, terms: Terms, rows: IntArray) -> Design:
+    """Lay out the regression in levels; anti-windup moves the integral, so a limit ends a stretch."""
+    level = [signals.e]
+    if terms.integral:
+        level.append(np.cumsum(signals.e))
+    if terms.derivative is not None:
+        level.append(derivative_state(signals, terms))
+    if terms.weight:
+        level.append(signals.r)
+    broken = ~_shifted(signals.free, lag) | ~signals.good | (signals.age == 0)
+    stretch = np.unique(np.cumsum(broken)[rows], return_inverse=True)[1].astype(np.int64)
+    columns = np.stack([x[rows] for x in level], axis=1)
+    return Design(columns=columns, target=signals.u[rows + lag], stretch=stretch)
+
+
+def solve(design: Design, robust: bool, passes: int = PASSES) -> Fit:
+    """Fit by least squares, or by least absolute residuals where rare rows obey another law."""
+    weights = np.ones(len(design.target))
+    coefficients = _weighted(design, weights)
+    residual = residual_of(design, coefficients, weights)
+    for _ in range(passes if robust else 0):
+        floor = 1e-12 * float(np.mean(np.abs(residual))) + np.finfo(float).tiny
+        weights = 1.0 / np.maximum(np.abs(residual), max(floor, 1e-14 * float(np.max(np.abs(design.target)))))
+        weights /= np.max(weights)
+        coefficients = _weighted(design, weights)
+        residual = residual_of(design, coefficients, weights)
+    return measured(design, coefficients, residual, robust)
+
+
+def measured(design: Design, coefficients: FloatArray, residual: FloatArray, robust: bool) -> Fit:
+    """Compare a residual with the actuator's own movement."""
+    whole = residual_of(design, np.zeros(len(coefficients)), np.ones(len(residual)))
+    scale, own = _scale(residual, robust), _scale(whole, robust)
+    relative = scale / own if own > 0 else math.inf
+    return Fit(coefficients=coefficients, residual=residual, scale=scale, relative=relative, robust=robust)
+
+
+def residual_of(design: Design, coefficients: FloatArray, weights: FloatArray) -> FloatArray:
+    """Target less columns × coefficients, less the weighted mean of each stretch."""
+    rest = design.target - design.columns @ coefficients
+    return _centred(rest[:, None], design.stretch, weights)[:, 0]
+
+
+def _weighted(design: Design, weights: FloatArray) -> FloatArray:
+    root = np.sqrt(weights)
+    columns = _centred(design.columns, design.stretch, weights) * root[:, None]
+    target = _centred(design.target[:, None], design.stretch, weights)[:, 0] * root
+    size = np.sqrt(np.sum(columns**2, axis=0))
+    size[size == 0] = 1.0
+    return np.asarray(np.linalg.lstsq(columns / size, target, rcond=1e-13)[0] / size)
+
+
+def _centred(values: FloatArray, stretch: IntArray | None, weights: FloatArray) -> FloatArray:
+    """Take the weighted mean of each stretch away."""
+    if stretch is None:
+        return values
+    total = np.bincount(stretch, weights)
+    means = np.stack([np.bincount(stretch, weights * column) / total for column in values.T], axis=1)
+    return np.asarray(values - means[stretch])
+
+
+def _scale(residual: FloatArray, robust: bool) -> float:
+    if len(residual) == 0:
+        return math.inf
+    return float(np.mean(np.abs(residual)) if robust else np.sqrt(np.mean(residual**2)))
+
+
+def _settling(terms: Terms) -> int:
+    if terms.derivative is None or terms.pole <= 0:
+        return 0
+    return min(1000, math.ceil(math.log(_SETTLED) / math.log(terms.pole)))
+
+
+def _shifted(values: _Flags, lag: int) -> _Flags:
+    """values[k + lag] at k; what lies outside the record is False or −1."""
+    outside = np.full(abs(lag), -1 if values.dtype != np.bool_ else False, dtype=values.dtype)
+    if lag >= 0:
+        return np.concatenate([values[lag:], outside])
+    return np.concatenate([outside, values[:lag]])
+
+
+def _spans(age: IntArray) -> list[tuple[int, int]]:
+    starts = np.flatnonzero(age == 0)
+    ends = [*starts[1:], len(age)]
+    return [(int(a), int(a + np.max(age[a:b]) + 1)) for a, b in zip(starts, ends, strict=True)]

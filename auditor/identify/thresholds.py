@@ -1,0 +1,63 @@
+"""Numbers that decide about a recovered controller, each with its reason.
+
+"Relative residual" is what a controller leaves of the actuator's own movement, 0 for an exact log, 1 for nothing explained.
+"""
+
+from __future__ import annotations
+
+NULL_GOOD = 0.01
+"""Null replay up to this is good: 1 % of the error's deviation costs the answers less than 1 % (method, §2)."""
+
+NULL_LIMIT = 0.10
+"""From here on a replay is about another controller than the recorded one: at most limited trust (method, §2)."""
+
+EXPLAINED_SHARE = 0.90
+"""Above `NULL_LIMIT` an answer is given only when this share of the unexplained actuator has a known origin (method, §2)."""
+
+LONGEST_SKEW = 3
+"""Samples by which the actuator's column may be early or late; further shifts mean another clock."""
+
+UNEXPLAINED_LIMIT = 0.5
+"""A controller that leaves half of the actuator's movement is none: cascades logged 60 times too coarsely leave
+0.6–1.0 of it, single controllers below 0.48 (Tennessee Eastman logs)."""
+
+UNEXPLAINED_LEVEL = 0.1
+"""The same for an actuator whose own noise hides its movement between samples: what is left of its level."""
+
+EXACT = 1e-6
+"""Relative residual below which a log counts as exact: such a log has no rounding that could matter."""
+
+LAG_BETTER = 0.9
+"""A shift of the actuator farther from none must bring the residual down to this share: signals that hardly move within
+a sample fit every lag alike."""
+
+BETTER = 20.0
+"""Gain in 2·log-likelihood, in units of ln n, that one more term of the controller must bring. One unit is the usual
+information criterion; residuals of real logs are correlated, which makes that criterion ten times too eager."""
+
+DERIVATIVE_BETTER = 0.7
+"""A derivative must also bring the residual down to this share: with any coloured rest, one more delayed error helps a bit."""
+
+OWN_LAW = 1e-3
+"""Relative residual below which the actuator is a static function of the measurement, rounding of the log included."""
+
+HEAVY_TAIL = 0.2
+"""Median over rms of the residual below which rare large moves decide a least-squares fit (0.67 for normal noise)."""
+
+SCHEME_BETTER = 0.9
+"""Another anti-windup or integral form than the one at hand must leave at most this share of what that one leaves."""
+
+ROWS_NEEDED = 50
+"""Samples away from limits below which nothing is recovered: four coefficients need an order more rows than that."""
+
+SCAN_ROWS = 20_000
+"""Rows that are enough to find the lag and the kind of controller; the gains then come from all rows."""
+
+CAUSE_HALVES = 0.5
+"""A change counts as the cause of a bad null replay when it brings the null replay down to this share."""
+
+RETUNED = 0.1
+"""Gains of the log's thirds that differ by more than this share of the whole log's are a retuning."""
+
+FEEDFORWARD_SHARE = 0.3
+"""Share of the unexplained movement that declared disturbances must account for to be named as feedforward."""

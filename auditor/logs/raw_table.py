@@ -1,0 +1,112 @@
+"""`RawTable`: the columns a loop needs from one file, cells as they were written; shared by all readers."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+
+import pyarrow as pa
+
+from auditor.errors import Problem
+from auditor.logs.findings.base import Finding
+from auditor.loop import Loop
+from auditor.text import nearest
+
+
+@dataclass(frozen=True, eq=False, slots=True, kw_only=True)
+class Wanted:
+    """The columns a loop needs: `numbers` maps a column to the loop file key that names it."""
+
+    time: str
+    numbers: Mapping[str, str]
+    mode: str | None = None
+
+    def names(self) -> dict[str, str]:
+        """Map every column to the loop file key that names it, the time column first."""
+        mode = {self.mode: "signals.mode"} if self.mode is not None else {}
+        return {self.time: "log.time"} | dict(self.numbers) | mode
+
+
+@dataclass(frozen=True, eq=False, slots=True, kw_only=True)
+class RawTable:
+    """One file's needed columns in their recorded order.
+
+    Attributes
+    ----------
+    label : str
+        What the file is called in errors.
+    times : tuple of pyarrow.ChunkedArray
+        The time column, or a date and a time-of-day column.
+    numbers : mapping of str to pyarrow.ChunkedArray
+        Number columns by name: text in a text log, any type in Parquet.
+    mode : pyarrow.ChunkedArray or None
+    decimal : str
+        Decimal sign of numbers that are text.
+    header : str
+        The time column's name as it stands in a text log (to know it again further down); "" in Parquet.
+    locate : callable
+        Turns a row (0 is the first) into words: "line 17".
+    findings : tuple of Finding
+        What reading the file noticed.
+    """
+
+    label: str
+    times: tuple[pa.ChunkedArray, ...]
+    numbers: Mapping[str, pa.ChunkedArray]
+    mode: pa.ChunkedArray | None
+    locate: Callable[[int], str]
+    decimal: str = "."
+    header: str = ""
+    findings: tuple[Finding, ...] = ()
+
+    def __len__(self) -> int:
+        return len(self.times[0])
+
+
+def wanted_columns(loop: Loop) -> Wanted:
+    """List the columns of the log that the loop's signals name."""
+    signals = loop.signals
+    roles = [("signals.measurement", signals.measurement), ("signals.setpoint", signals.setpoint)]
+    roles += [("signals.actuator", signals.actuator)]
+    roles += [(f"signals.disturbances[{k}]", signal) for k, signal in enumerate(signals.disturbances)]
+    numbers: dict[str, str] = {}
+    for key, signal in roles:
+        if signal.column is not None:
+            numbers.setdefault(signal.column, key)
+    return Wanted(time=loop.log.time, numbers=numbers, mode=signals.mode.column if signals.mode else None)
+
+
+def time_columns(time: str, names: Sequence[str]) -> tuple[str, ...]:
+    """Return the column(s) that `time` names: itself, or two joined by a plus sign ("date + clock").
+
+    Empty when they are not all among `names`.
+    """
+    if time in names:
+        return (time,)
+    parts = tuple(part.strip() for part in time.split("+"))
+    return parts if len(parts) == 2 and all(part in names for part in parts) else ()
+
+
+def column_problems(wanted: Wanted, names: Sequence[str], label: str) -> list[Problem]:
+    """List every wanted column that `names` (the file's own) does not have, or has twice."""
+    problems = []
+    for name, key in wanted.names().items():
+        if not (time_columns(name, names) if key == "log.time" else name in names):
+            problems.append(_missing(name, key, names, label))
+        elif names.count(name) > 1:
+            what = f'{names.count(name)} columns are called "{name}".'
+            problems.append(Problem(what=what, where=label, do="rename them, so that each has its own name"))
+    return problems
+
+
+def _missing(name: str, key: str, names: Sequence[str], label: str) -> Problem:
+    shown = ", ".join(f'"{n}"' for n in names[:40]) + (f" and {len(names) - 40} more" if len(names) > 40 else "")
+    close = nearest(name, names) or next((n for n in names if n.casefold() == name.casefold()), None)
+    if close:
+        do = f'did you mean "{close}"?'
+    elif key == "log.time" and "" in names:
+        do = 'set time = "" if it is the column without a name'
+    else:
+        do = f"set {key} to one of the columns found"
+    what = f'The log has no column "{name}".'
+    return Problem(what=what, where=label, found=f"columns {shown}", expected=f'"{name}", named by {key}', do=do)

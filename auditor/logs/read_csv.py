@@ -1,0 +1,228 @@
+"""One text log (CSV and its relatives) as a `RawTable`: cells stay text, only the needed columns are built."""
+
+from __future__ import annotations
+
+import csv
+import itertools
+from collections.abc import Sequence
+from dataclasses import replace
+from pathlib import Path
+
+import pyarrow as pa
+import pyarrow.csv
+
+from auditor.errors import LogError, Problem, raise_all
+from auditor.logs.dress import Dress, look
+from auditor.logs.files import GZIP, UNREADABLE, open_text
+from auditor.logs.findings.base import Finding
+from auditor.logs.raw_table import RawTable, Wanted, column_problems, time_columns
+from auditor.loop import LogSource
+
+_BLOCK = 4 * 1024 * 1024
+_FEW_ROWS = 10
+_FEW_SHARE = 0.01
+_MOST_ROWS = 10_000
+_AGAIN = "state [log] delimiter, encoding and skip_rows, or export the log again"
+
+
+class _OddRows:
+    """Collects the lines that have not as many cells as a row has, and gives up when there are very many."""
+
+    def __init__(self) -> None:
+        self.texts: list[str] = []
+        self.example = ""
+
+    def __call__(self, row: pa.csv.InvalidRow) -> str:
+        self.texts.append(row.text)
+        self.example = self.example or f"{row.actual_columns} cells: {_short(row.text)}"
+        return "skip" if len(self.texts) <= _MOST_ROWS else "error"
+
+
+def read_csv(path: Path, label: str, source: LogSource, wanted: Wanted) -> RawTable:
+    """Read the wanted columns of a text log, packed with gzip or not.
+
+    Parameters
+    ----------
+    path : Path
+    label : str
+        What the file is called in errors.
+    source : LogSource
+        What the loop file states about the log's dress; the rest is found by looking.
+    wanted : Wanted
+        The columns to read; no other is built.
+
+    Raises
+    ------
+    LogError
+        When the file cannot be opened or decoded, lacks a wanted column, holds a header only, or when more than
+        10 rows and 1 % of the rows have not the usual number of cells.
+    """
+    dress = look(path, label, source, wanted)
+    raise_all(LogError, column_problems(wanted, dress.names, label) or _shape_problems(dress, wanted, label))
+    odd = _OddRows()
+    try:
+        table, dress = _parse(path, dress, wanted, odd, stated=source.encoding is not None)
+    except (pa.ArrowInvalid, UnicodeError, *UNREADABLE) as error:
+        raise LogError(_unreadable(error, dress, odd, label)) from None
+    _check_rows(table.num_rows, dress, odd, label)
+    return _raw_table(table, path, dress, wanted, label, _findings(path, dress, odd, label))
+
+
+def _shape_problems(dress: Dress, wanted: Wanted, label: str) -> list[Problem]:
+    if dress.spare_cell:
+        what = f"The rows have {dress.cells} cells, the header has {len(dress.names)} names."
+        do = "put decimal commas in quotes or use another delimiter, or name the last column"
+        return [Problem(what=what, where=label, found=f'"{dress.spare_cell}" beyond the last name', do=do)]
+    last = max(_places(dress, wanted))
+    if last >= dress.cells:
+        what = f'The rows have {dress.cells} cells, column "{dress.names[last]}" would be number {last + 1}.'
+        return [Problem(what=what, where=label, do="check the header line; " + _AGAIN)]
+    return []
+
+
+def _places(dress: Dress, wanted: Wanted) -> list[int]:
+    names = [*time_columns(wanted.time, dress.names), *wanted.numbers]
+    return [dress.names.index(name) for name in [*names, *([wanted.mode] if wanted.mode is not None else [])]]
+
+
+def _parse(path: Path, dress: Dress, wanted: Wanted, odd: _OddRows, stated: bool) -> tuple[pa.Table, Dress]:
+    try:
+        return _parse_as(path, dress, wanted, odd), dress
+    except pa.ArrowInvalid as error:
+        # The sample was plain ASCII and a letter further down is not UTF-8: the other common encoding is meant.
+        if stated or "invalid UTF8" not in str(error):
+            raise
+        odd.texts.clear()
+        dress = replace(dress, encoding="cp1252")
+        return _parse_as(path, dress, wanted, odd), dress
+
+
+def _parse_as(path: Path, dress: Dress, wanted: Wanted, odd: _OddRows) -> pa.Table:
+    columns = [str(place) for place in dict.fromkeys(_places(dress, wanted))]
+    read = pa.csv.ReadOptions(
+        skip_rows=dress.lines_before,
+        column_names=[str(place) for place in range(dress.cells)],
+        encoding="utf-8" if dress.encoding == "utf-8-sig" else dress.encoding,
+        block_size=_BLOCK,
+    )
+    cut = pa.csv.ParseOptions(
+        delimiter=dress.delimiter, newlines_in_values=dress.multiline, invalid_row_handler=odd
+    )
+    convert = pa.csv.ConvertOptions(
+        include_columns=columns,
+        column_types={name: pa.string() for name in columns},
+        null_values=[""],
+        strings_can_be_null=True,
+    )
+    with _stream(path) as stream:
+        return pa.csv.read_csv(stream, read_options=read, parse_options=cut, convert_options=convert)
+
+
+def _stream(path: Path) -> pa.NativeFile:
+    with path.open("rb") as file:
+        packed = file.read(2) == GZIP
+    return pa.input_stream(str(path), compression="gzip" if packed else None)
+
+
+def _unreadable(error: Exception, dress: Dress, odd: _OddRows, label: str) -> Problem:
+    if odd.texts and "Expected" in str(error):
+        return _too_odd(f"more than {_MOST_ROWS}", dress, odd, label)
+    if isinstance(error, UnicodeError) or "UTF8" in str(error):
+        what = f"The log has letters that are not {dress.encoding}."
+        return Problem(what=what, where=label, found=_short(str(error)), do="state [log] encoding")
+    return Problem(what="The log cannot be read as a table.", where=label, found=_short(str(error)), do=_AGAIN)
+
+
+def _too_odd(count: str, dress: Dress, odd: _OddRows, label: str) -> Problem:
+    what = f"The lines do not have equally many cells: {count} differ."
+    return Problem(what=what, where=label, found=odd.example, expected=f"{dress.cells} cells in every line", do=_AGAIN)
+
+
+def _check_rows(rows: int, dress: Dress, odd: _OddRows, label: str) -> None:
+    if len(odd.texts) > max(_FEW_ROWS, _FEW_SHARE * rows):
+        raise LogError(_too_odd(f"{len(odd.texts)} of {rows + len(odd.texts)}", dress, odd, label))
+    if rows == 0:
+        found = f"a header with {len(dress.names)} columns and no row below it"
+        raise LogError(Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out"))
+
+
+def _findings(path: Path, dress: Dress, odd: _OddRows, label: str) -> tuple[Finding, ...]:
+    findings = []
+    if dress.below_header:
+        shown = " / ".join(_short(line) for line in dress.below_header)
+        count = len(dress.below_header)
+        findings.append(_note("lines-below-header", count, f"{label}, below the header: {shown}", "skipped"))
+    if odd.texts:
+        findings += _odd_findings(path, dress, odd, label)
+    return tuple(findings)
+
+
+def _odd_findings(path: Path, dress: Dress, odd: _OddRows, label: str) -> list[Finding]:
+    """Tell lines after the last row (a footer) from broken lines among the rows."""
+    lines, last_row = _find(path, dress, set(odd.texts))
+    below = [text for number, text in lines if number > last_row]
+    among = [f"line {number}: {_short(text)}" for number, text in lines if number <= last_row]
+    findings = []
+    if below:
+        shown = " / ".join(_short(text) for text in below[:3])
+        findings.append(_note("footer", len(below), f"{label}, below the last row: {shown}", "skipped"))
+    broken = len(odd.texts) - len(below)
+    if broken:
+        detail = f"{label}: {broken} lines have not {dress.cells} cells, the first at {among[0] if among else odd.example}"
+        findings.append(_note("broken-row", broken, detail, "skipped"))
+    return findings
+
+
+def _find(path: Path, dress: Dress, texts: set[str]) -> tuple[list[tuple[int, str]], int]:
+    """Find lines by their text; also return the number of the last line that is a row."""
+    found, last_row = [], dress.lines_before
+    with open_text(path, dress.encoding) as file:
+        for number, line in enumerate(file, start=1):
+            text = line.rstrip("\n")
+            if number > dress.lines_before and text in texts:
+                found.append((number, text))
+            elif text:
+                last_row = number
+    return found, last_row
+
+
+def _raw_table(
+    table: pa.Table, path: Path, dress: Dress, wanted: Wanted, label: str, findings: tuple[Finding, ...]
+) -> RawTable:
+    def column(name: str) -> pa.ChunkedArray:
+        return table.column(str(dress.names.index(name)))
+
+    times = time_columns(wanted.time, dress.names)
+    return RawTable(
+        label=label,
+        times=tuple(column(name) for name in times),
+        numbers={name: column(name) for name in wanted.numbers},
+        mode=column(wanted.mode) if wanted.mode is not None else None,
+        locate=lambda row: f"line {_line_of_row(path, dress, row)}",
+        decimal=dress.decimal,
+        header=" ".join(times),
+        findings=findings,
+    )
+
+
+def _line_of_row(path: Path, dress: Dress, row: int) -> int:
+    """Count lines up to a row; slow, but asked for only when something is wrong there."""
+    with open_text(path, dress.encoding) as file:
+        rows = csv.reader(itertools.islice(file, dress.lines_before, None), delimiter=dress.delimiter)
+        seen = -1
+        for cells in rows:
+            seen += len(cells) == dress.cells
+            if seen == row:
+                return dress.lines_before + rows.line_num
+    return dress.lines_before + row + 1
+
+
+def _note(kind: str, count: int, detail: str, effect: str) -> Finding:
+    return Finding(kind=kind, start=None, end=None, count=count, detail=detail, effect=effect)
+
+
+def _short(text: str) -> str:
+    return text if len(text) <= 80 else text[:79] + "…"
+
+
+__all__: Sequence[str] = ["read_csv"]

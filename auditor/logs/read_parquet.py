@@ -1,0 +1,72 @@
+"""One Parquet file as a `RawTable`: only the needed columns are read, in the types they are stored with."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pyarrow as pa
+import pyarrow.compute as pc
+import pyarrow.parquet
+
+from auditor.errors import LogError, Problem, raise_all
+from auditor.logs.raw_table import RawTable, Wanted, column_problems, time_columns
+
+
+def read_parquet(path: Path, label: str, wanted: Wanted) -> RawTable:
+    """Read the wanted columns of a Parquet file.
+
+    Parameters
+    ----------
+    path : Path
+    label : str
+        What the file is called in errors.
+    wanted : Wanted
+        The columns to read; no other leaves the disk.
+
+    Raises
+    ------
+    LogError
+        When the file is damaged, lacks a wanted column, has no rows, or holds lists or structures where single
+        values are needed.
+    """
+    try:
+        with pa.parquet.ParquetFile(path) as file:
+            names = list(file.schema_arrow.names)
+            raise_all(LogError, column_problems(wanted, names, label))
+            table = file.read(columns=_columns(wanted, names))
+    except (pa.ArrowException, OSError) as error:
+        found = str(error).splitlines()[0]
+        raise LogError(Problem(what="The Parquet file is damaged.", where=label, found=found, do="write it again")) from None
+    if table.num_rows == 0:
+        found = f"{len(names)} columns and no row"
+        raise LogError(Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out"))
+    return _raw_table(_single_values(table, label), wanted, label)
+
+
+def _columns(wanted: Wanted, names: list[str]) -> list[str]:
+    mode = [wanted.mode] if wanted.mode is not None else []
+    return list(dict.fromkeys([*time_columns(wanted.time, names), *wanted.numbers, *mode]))
+
+
+def _single_values(table: pa.Table, label: str) -> pa.Table:
+    """Undo dictionaries, and refuse columns whose cells are no single values."""
+    problems = []
+    for place, field in enumerate(table.schema):
+        if pa.types.is_dictionary(field.type):
+            table = table.set_column(place, field.name, pc.cast(table.column(place), field.type.value_type))
+        elif pa.types.is_nested(field.type):
+            what = f'Column "{field.name}" does not hold single values.'
+            found, do = str(field.type), "write one column per value"
+            problems.append(Problem(what=what, where=label, found=found, expected="numbers, texts or times", do=do))
+    raise_all(LogError, problems)
+    return table
+
+
+def _raw_table(table: pa.Table, wanted: Wanted, label: str) -> RawTable:
+    return RawTable(
+        label=label,
+        times=tuple(table.column(name) for name in time_columns(wanted.time, table.column_names)),
+        numbers={name: table.column(name) for name in wanted.numbers},
+        mode=table.column(wanted.mode) if wanted.mode is not None else None,
+        locate=lambda row: f"row {row + 1}",
+    )

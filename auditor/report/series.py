@@ -1,0 +1,44 @@
+"""The signals of one replay beside the record, as a table and as Parquet."""
+
+from __future__ import annotations
+
+import io
+
+import numpy as np
+import pandas as pd
+import pyarrow as pa
+import pyarrow.parquet as pq
+
+from auditor.logs.record import Record
+from auditor.replay import Series
+
+
+def series_frame(record: Record, series: Series) -> pd.DataFrame:
+    """Return record and replay sample by sample.
+
+    Returns
+    -------
+    DataFrame
+        `time` (UTC), `setpoint`, `measurement`, `actuator` as recorded, `replayed_measurement`,
+        `replayed_actuator`, and `updated`, true at the samples that were sent.
+    """
+    times = record.time_ns(np.arange(len(record)))
+    return pd.DataFrame(
+        {
+            "time": pd.DatetimeIndex(times.view("datetime64[ns]")).tz_localize("UTC"),
+            "setpoint": record.r,
+            "measurement": record.y,
+            "actuator": record.u,
+            "replayed_measurement": series.y,
+            "replayed_actuator": series.u,
+            "updated": series.updated,
+        }
+    )
+
+
+def series_parquet(record: Record, series: Series) -> bytes:
+    """Write `series_frame` as Parquet."""
+    sink = io.BytesIO()
+    table = pa.Table.from_pandas(series_frame(record, series), preserve_index=False)
+    pq.write_table(table.replace_schema_metadata(None), sink, compression="zstd")
+    return sink.getvalue()

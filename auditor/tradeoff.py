@@ -1,0 +1,155 @@
+"""Every rule against the best clock that uses no more updates (method, §6)."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+
+import numpy as np
+
+from auditor.arrays import FloatArray
+from auditor.loop import Loop
+from auditor.progress import Progress, silent
+from auditor.replay.bench import Bench
+from auditor.replay.lanes import replay_lanes
+from auditor.replay.measuring import interval, per_lane, totals
+from auditor.replay.types import Setting
+from auditor.sweep import Parts
+
+PHASES = 8
+"""The clock at every n is averaged over up to this many phases: where it starts is chance."""
+
+PARTS = ("whole", "first", "rest")
+
+
+@dataclass(frozen=True, eq=False, slots=True, kw_only=True)
+class ClockCurve:
+    """The slowed-down clock under every likely plant.
+
+    Attributes
+    ----------
+    every : tuple of int
+        Divisors n, ascending.
+    counts, squares : mapping of part to ndarray, shape (divisors, draws)
+        Updates and mean square error [unit²], the mean over phases; infinite where the clock ran away.
+    """
+
+    every: tuple[int, ...]
+    counts: dict[str, FloatArray]
+    squares: dict[str, FloatArray]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Comparison:
+    """A rule against the best clock with no more updates, on one part of the record.
+
+    `difference90` is the 90 % interval of (rule − clock) in RMS error over the likely plants; None when even the
+    slowest clock replayed uses more updates than the rule.
+    """
+
+    outcome: str
+    clock_rms: float | None
+    difference90: tuple[float, float] | None
+
+
+def divisors_for(fewest: float, samples: int) -> tuple[int, ...]:
+    """Divisors dense at first, then about 20 % apart, until the clock uses no more than `fewest` updates."""
+    slowest = max(2, int(np.ceil(samples / max(fewest, 1.0))) + 1)
+    grid = [1, 2, 3, 4, 5, 6, 7, 8]
+    while grid[-1] < slowest:
+        grid.append(max(grid[-1] + 1, round(grid[-1] * 1.2)))
+    return tuple(grid)
+
+
+def clock_curve(
+    bench: Bench, loop: Loop, parts: Parts, every: Sequence[int], *, jobs: int = 2, progress: Progress = silent
+) -> ClockCurve:
+    """Replay the slowed-down clock at every divisor and phase over every likely plant."""
+    done = 0
+
+    def one(n: int) -> dict[str, tuple[FloatArray, FloatArray]]:
+        nonlocal done
+        result = _mean_over_phases(bench, loop, parts, n)
+        done += 1
+        progress("replaying the slowed-down clock", done / len(every))
+        return result
+
+    with ThreadPoolExecutor(max(1, jobs)) as pool:
+        rows = list(pool.map(one, every))
+    return ClockCurve(
+        every=tuple(every),
+        counts={p: np.array([row[p][0] for row in rows]) for p in PARTS},
+        squares={p: np.array([row[p][1] for row in rows]) for p in PARTS},
+    )
+
+
+def _mean_over_phases(bench: Bench, loop: Loop, parts: Parts, n: int) -> dict[str, tuple[FloatArray, FloatArray]]:
+    phases = np.unique(np.linspace(1, n, min(n, PHASES)).round().astype(int))
+    counts: dict[str, list[FloatArray]] = {p: [] for p in PARTS}
+    squares: dict[str, list[FloatArray]] = {p: [] for p in PARTS}
+    for phase in phases:
+        setting = Setting(rule="periodic", values={"every": float(n), "phase": float(phase)})
+        lanes = replay_lanes(bench, setting)
+        for part in PARTS:
+            total = totals(
+                lanes.y, lanes.u, lanes.updated, bench.record, bench.controller, loop.limits, getattr(parts, part)
+            )
+            measured = per_lane(total, bench.record, loop.limits)
+            counts[part].append(measured["updates"][: bench.draws])
+            square = measured["rms_error"][: bench.draws] ** 2
+            squares[part].append(np.where(np.isfinite(square), square, np.inf))
+    return {p: (np.mean(counts[p], axis=0), np.mean(squares[p], axis=0)) for p in PARTS}
+
+
+def best_clock(counts: FloatArray, squares: FloatArray, budget: float) -> float:
+    """Smallest mean square error of a clock that uses at most `budget` updates, for one likely plant.
+
+    Between neighbouring divisors the mean square is linear in the count (time-sharing); with fixed gains the
+    clock's curve is not monotone, so a slower clock may be the best one (lower envelope).
+
+    Parameters
+    ----------
+    counts, squares : ndarray, shape (divisors,)
+        From the fastest clock to the slowest.
+
+    Returns
+    -------
+    float
+        Infinite when every clock uses more than `budget`.
+    """
+    slower = counts <= budget
+    if not slower.any():
+        return float("inf")
+    best = float(np.min(squares[slower]))
+    first = int(np.argmax(slower))
+    if first > 0 and np.isfinite(squares[first - 1]):
+        share = (budget - counts[first]) / (counts[first - 1] - counts[first])
+        best = min(best, float((1 - share) * squares[first] + share * squares[first - 1]))
+    return best
+
+
+def compare(curve: ClockCurve, part: str, counts: FloatArray, squares: FloatArray) -> Comparison:
+    """Compare one setting with the clock, likely plant by likely plant.
+
+    Parameters
+    ----------
+    counts, squares : ndarray, shape (draws,)
+        The setting's updates and mean square errors on `part`.
+    """
+    best = np.array(
+        [
+            best_clock(curve.counts[part][:, d], curve.squares[part][:, d], counts[d])
+            for d in range(curve.counts[part].shape[1])
+        ]
+    )
+    clock = float(np.sqrt(np.median(best)))
+    if not np.isfinite(clock):
+        return Comparison(outcome="unclear", clock_rms=None, difference90=None)
+    with np.errstate(invalid="ignore"):
+        difference = np.sqrt(squares) - np.sqrt(best)
+    low, high = interval(np.where(np.isnan(difference), np.inf, difference))
+    # The answer's own rounding is relative to the difference; what counts is the error it is a difference of.
+    low, high = low - 0.001 * clock, high + 0.001 * clock
+    outcome = "better" if high < 0 else ("worse" if low > 0 else "unclear")
+    return Comparison(outcome=outcome, clock_rms=clock, difference90=(low, high))
