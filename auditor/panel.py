@@ -29,6 +29,8 @@ LOWEST, HIGHEST = 0.15, 4.0
 
 GUARDS = ("min_gap_s", "max_silence_s")
 
+LINKS = ("sensor", "actuator")
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Scale:
@@ -156,3 +158,16 @@ def _rounded(values: Iterable[float]) -> list[float]:
         unit = 10.0 ** (math.floor(math.log10(value)) - 2)
         out.append(float(f"{math.ceil(value / unit - 1e-9) * unit:.12g}"))
     return list(dict.fromkeys(out))
+
+
+def one_setting(rule: str, given: Mapping[str, float], loop: Loop, link: str | None = None) -> Setting:
+    """One setting as asked for on a command line.
+
+    Raises
+    ------
+    RuleError
+        The rule, a setting or the link is unknown or out of range.
+    """
+    if link is not None and link not in LINKS:
+        raise RuleError(Problem(what="there is no such link", found=link, expected=" or ".join(LINKS)))
+    return make_setting(rule, given, loop, loop.period, RuleRequest(rule=rule, link=link))

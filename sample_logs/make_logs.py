@@ -94,7 +94,7 @@ def canal_pool(seed: int = 1) -> Scenario:
     return Scenario(
         truth=truth,
         controller=Pid(
-            gain=260.0, integral_time=6000.0, integral="forward", low=0.0, high=100.0, max_rate=0.25
+            gain=150.0, integral_time=5400.0, integral="forward", low=0.0, high=100.0, max_rate=0.25
         ),
         period=period,
         setpoint=setpoint,
@@ -117,8 +117,9 @@ def aeration(seed: int = 1) -> Scenario:
     clock = hours % 24
     day = np.exp(-(((clock - 10) / 2.6) ** 2)) + 0.8 * np.exp(-(((clock - 20) / 2.8) ** 2))
     storm = between(hours, 49.0, 9.0) * (1 - np.exp(-(hours - 49.0).clip(0) / 1.5))
+    # Rain dilutes what comes in, but it comes in gusts.
     uptake = 9.0 * (day - day.mean()) - 6.0 * storm
-    uptake += (2.2 + 1.8 * storm) * drift(rng, count * FINE, 2400.0, period / FINE)
+    uptake += 8.0 * (1 + 0.8 * storm) * drift(rng, count * FINE, 900.0, period / FINE)
     manual = np.full(count, np.nan)
     manual[2 * 360 * 24 - 360 * 14 : 2 * 360 * 24 - 360 * 14 + 150] = 55.0
     truth = chain((45.0, 420.0, 60.0), gain=0.075, delay_s=17.0, load_stage=1, load_gain=-0.075).resting(
@@ -126,11 +127,11 @@ def aeration(seed: int = 1) -> Scenario:
     )
     return Scenario(
         truth=truth,
-        controller=Pid(gain=28.0, integral_time=420.0, integral="backward", low=20.0, high=100.0),
+        controller=Pid(gain=45.0, integral_time=300.0, integral="backward", low=20.0, high=100.0),
         period=period,
         setpoint=np.full(count, 2.0),
         load=uptake,
-        noise=rng.normal(0, 0.008, count),
+        noise=rng.normal(0, 0.01, count),
         y_step=0.01,
         u_step=0.1,
         manual=manual,
@@ -156,7 +157,7 @@ def heat_station(seed: int = 1) -> Scenario:
     )
     return Scenario(
         truth=truth,
-        controller=Pid(gain=3.3, integral_time=34.0, integral="backward", low=0.0, high=100.0, max_rate=1.5),
+        controller=Pid(gain=4.2, integral_time=26.0, integral="backward", low=0.0, high=100.0, max_rate=1.5),
         period=period,
         setpoint=setpoint,
         load=load - load.mean(),
@@ -164,8 +165,8 @@ def heat_station(seed: int = 1) -> Scenario:
         y_step=0.01,
         u_step=0.5,
         start=pd.Timestamp("2025-01-21T00:00:00Z"),
-        low=52.0,
-        high=70.0,
+        low=53.0,
+        high=71.0,
     )
 
 
@@ -174,17 +175,18 @@ def booster_pump(seed: int = 1) -> Scenario:
     rng, period = np.random.default_rng([seed, 4]), 0.5
     count = 43_200
     hours = fine_hours(count, period)
-    flow = 12.0 + 2.0 * drift(rng, count * FINE, 40.0, period / FINE)
-    flow += 2.5 * pulses(rng, hours, per_day=900, mean_hours=0.02)
-    hydrants = np.zeros_like(hours)
-    for begin in np.sort(rng.uniform(0.3, 5.8, 11)):
-        hydrants += rng.uniform(6.0, 9.0) * between(hours, begin, rng.uniform(0.03, 0.12))
-    loss = 0.0045 * (flow + hydrants) ** 2
-    setpoint = np.full(count, 4.2)
-    for hour, pressure in ((0.5, 4.0), (1.1, 4.2), (1.9, 4.4), (2.6, 4.2), (3.4, 4.0), (4.2, 4.2), (5.1, 4.1)):
+    flow = 12.0 + 1.3 * drift(rng, count * FINE, 40.0, period / FINE)
+    flow += 1.5 * pulses(rng, hours, per_day=900, mean_hours=0.02)
+    # A drill: the brigade opens and closes the same hydrant again and again, in about a second each time.
+    hydrant = np.zeros_like(hours)
+    for begin in np.arange(0.4, 5.8, 0.2) + rng.uniform(-0.06, 0.06, 27):
+        hydrant += 7.5 * opened(hours, begin, rng.uniform(0.02, 0.08), 1.0 / 3600)
+    loss = 0.0045 * (flow + hydrant) ** 2
+    setpoint = np.full(count, 4.0)
+    for hour, pressure in ((0.9, 4.1), (1.3, 4.0), (2.1, 4.2), (2.5, 4.0), (3.3, 4.15), (3.7, 4.0), (4.9, 4.1), (5.3, 4.0)):
         setpoint[int(hour * 7200) :] = pressure
     truth = chain((0.9, 4.0, 0.4), gain=1.0, delay_s=0.6, load_stage=1, load_gain=-1.0).resting(
-        4.2, 70.0, lambda speed: 10.5 * (max(speed, 0.0) / 100) ** 2
+        4.0, 70.0, lambda speed: 10.5 * (max(speed, 0.0) / 100) ** 2
     )
     return Scenario(
         truth=truth,
@@ -217,6 +219,11 @@ def fine_hours(count: int, period: float) -> np.ndarray:
 def between(hours: np.ndarray, begin: float, length: float) -> np.ndarray:
     """One from `begin` on for `length` hours, else zero."""
     return ((hours >= begin) & (hours < begin + length)).astype(float)
+
+
+def opened(hours: np.ndarray, begin: float, length: float, ramp: float) -> np.ndarray:
+    """As `between`, rising and falling over `ramp` hours."""
+    return np.clip((hours - begin) / ramp, 0, 1) - np.clip((hours - begin - length) / ramp, 0, 1)
 
 
 def pulses(rng: np.random.Generator, hours: np.ndarray, *, per_day: float, mean_hours: float) -> np.ndarray:

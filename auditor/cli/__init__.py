@@ -1,1 +1,1 @@
-"""."""
+"""The command line: a command parses, calls one library function, prints."""

@@ -5,8 +5,8 @@ from __future__ import annotations
 from typing import Final
 
 from auditor.dangers import band, blind, burst, growth, limit, outside_model, rate, saturation, silence
-from auditor.dangers.base import Case, Detector
-from auditor.dangers.flags import LIKELY, SEEN, raise_flags
+from auditor.dangers.base import LIKELY, SEEN, Case, Detector
+from auditor.dangers.flags import raise_flags
 from auditor.dangers.interval import Flag, covered_samples
 
 __all__ = ["DETECTORS", "LIKELY", "SEEN", "Case", "Detector", "Flag", "covered_samples", "find_flags"]

@@ -20,6 +20,12 @@ from auditor.loop import Loop
 from auditor.replay import Setting
 from auditor.text import duration, number, percent
 
+SEEN = 0.05
+"""Share of the likely plants below which a danger is not reported."""
+
+LIKELY = 0.5
+"""Share of the likely plants from which a danger is more than something to watch."""
+
 NULL = 1e-6
 """Differences below this share of the error's deviation are rounding: a replay of an exact log returns it to that."""
 
@@ -213,7 +219,7 @@ def near_limits(case: Case, stretch: Stretch) -> bool:
     high = np.inf if limits.high is None else limits.high - band
     y = stretch.rows(case.y)
     close = ((y < low) | (y > high)) & stretch.mask
-    return bool(close.any(axis=0).mean() >= 0.5)
+    return bool(close.any(axis=0).mean() >= LIKELY)
 
 
 def worst(case: Case, amount: FloatArray, mask: BoolArray) -> float:

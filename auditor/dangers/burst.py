@@ -15,7 +15,7 @@ import math
 import numpy as np
 
 from auditor.arrays import BoolArray, IntArray
-from auditor.dangers.base import Case, Evidence, Stretch
+from auditor.dangers.base import LIKELY, Case, Evidence, Stretch
 from auditor.dangers.interval import Runs, longer_than, longest_run, paint
 from auditor.loop import Channel
 from auditor.text import duration, number
@@ -38,7 +38,7 @@ def find(case: Case) -> dict[str, BoolArray]:
 def may_be_danger(case: Case, stretch: Stretch) -> bool:
     """Only over a declared budget."""
     over = stretch.parts.get("over budget")
-    return over is not None and bool(over.any(axis=0).mean() >= 0.5)
+    return over is not None and bool(over.any(axis=0).mean() >= LIKELY)
 
 
 def describe(case: Case, stretch: Stretch) -> Evidence:

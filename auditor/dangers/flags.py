@@ -9,14 +9,8 @@ from types import MappingProxyType
 import numpy as np
 
 from auditor.arrays import BoolArray
-from auditor.dangers.base import Case, Detector, Stretch
+from auditor.dangers.base import LIKELY, SEEN, Case, Detector, Stretch
 from auditor.dangers.interval import Flag, shared_intervals
-
-SEEN = 0.05
-"""Share of the likely plants below which a danger is not reported."""
-
-LIKELY = 0.5
-"""Share of the likely plants from which a danger is more than something to watch."""
 
 
 def raise_flags(case: Case, replay: int, detector: Detector) -> tuple[Flag, ...]:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -70,9 +69,14 @@ def columns_of(peek: Peek) -> tuple[Column, ...]:
     table = pa.concat_tables(peek.parts, promote_options="permissive")
     comma = peek.dress is not None and peek.dress.decimal == ","
     return tuple(
-        _column(name, unit, table.column(n), comma)
+        _column(name, unit, _spelled_out(table.column(n)), comma)
         for n, (name, unit) in enumerate(zip(peek.names, peek.units, strict=True))
     )
+
+
+def _spelled_out(cells: pa.ChunkedArray) -> pa.ChunkedArray:
+    """Return the texts themselves where a column holds numbers of texts."""
+    return cells.cast(cells.type.value_type) if pa.types.is_dictionary(cells.type) else cells
 
 
 def part_starts(peek: Peek) -> BoolArray:
@@ -119,14 +123,3 @@ def numbers_of(cells: pa.ChunkedArray, comma: bool) -> FloatArray:
         numbers = pc.if_else(pc.match_substring_regex(text, _NUMBER), text, None).cast(pa.float64())
     found = np.asarray(numbers.to_numpy(), dtype=np.float64)
     return np.where(np.isfinite(found), found, np.nan)
-
-
-def held(numbers: FloatArray, starts: BoolArray) -> FloatArray:
-    """Hold the last number through empty cells, never over the border between two parts."""
-    index = np.where(np.isfinite(numbers) | starts, np.arange(len(numbers)), 0)
-    return np.asarray(numbers[np.maximum.accumulate(index)])
-
-
-def numeric_columns(columns: Sequence[Column]) -> list[Column]:
-    """Return the columns of numbers."""
-    return [column for column in columns if column.is_number]

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import glob
+import gzip
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -18,9 +19,10 @@ HEAD = 256 * 1024
 PART = 5 * 1024 * 1024
 PART_ROWS = 66_000
 
+GZIP = b"\x1f\x8b"
+
 _MAGIC = (
     (b"PK\x03\x04", "a ZIP archive or a spreadsheet", "save the sheet as CSV, or unpack the archive"),
-    (b"\x1f\x8b", "a gzip archive", "unpack it first"),
     (b"\xd0\xcf\x11\xe0", "a spreadsheet of the old binary kind", "save the sheet as CSV"),
     (b"SQLite format 3", "a database", "export the loop's columns as CSV or Parquet"),
 )
@@ -63,7 +65,7 @@ def look(path: Path) -> Peek:
     """
     files = _files(path)
     chosen = [files[n] for n in sorted({0, len(files) // 2, len(files) - 1})]
-    if chosen[0].open("rb").read(4) == b"PAR1":
+    if _first_bytes(chosen[0], 4) == b"PAR1":
         return _parquet(chosen, whole=len(chosen) == len(files))
     return _text(chosen, whole=len(chosen) == len(files))
 
@@ -105,8 +107,7 @@ def _parquet(files: Sequence[Path], whole: bool) -> Peek:
 
 
 def _text(files: Sequence[Path], whole: bool) -> Peek:
-    with files[0].open("rb") as file:
-        head = file.read(HEAD)
+    head = _first_bytes(files[0], HEAD)
     _refuse_binary(files[0], head)
     encoding = encoding_of(head)
     dress = look_at(_decoded(head, encoding), encoding)
@@ -119,8 +120,10 @@ def _text(files: Sequence[Path], whole: bool) -> Peek:
     if not parts:
         raise LogError(_refusal(files[0], "the log is empty", "no row", "export it again"))
     units = dress.units or ("",) * len(names)
-    complete = whole and len(files) == 1 and len(chunks) == 1 and parts[0].num_rows <= PART_ROWS * 3
-    return Peek(parts=tuple(part.slice(0, PART_ROWS * 3 // len(parts)) for part in parts), units=units, dress=dress, whole=complete)
+    most = PART_ROWS * 3 // len(parts)
+    complete = whole and len(files) == len(chunks) and all(part.num_rows <= most for part in parts)
+    complete &= all(path.stat().st_size <= 3 * PART // len(files) for path in files)
+    return Peek(parts=tuple(part.slice(0, most) for part in parts), units=units, dress=dress, whole=complete)
 
 
 def _refuse_binary(path: Path, head: bytes) -> None:
@@ -140,18 +143,25 @@ def _decoded(data: bytes, encoding: str) -> str:
     return data.decode(encoding, "replace").lstrip("\ufeff")
 
 
+def _first_bytes(path: Path, count: int) -> bytes:
+    with gzip.open(path) if _is_packed(path) else path.open("rb") as file:
+        return bytes(file.read(count))
+
+
+def _is_packed(path: Path) -> bool:
+    with path.open("rb") as file:
+        return file.read(2) == GZIP
+
+
 def _chunks(files: Sequence[Path], dress: Dress) -> Iterator[str]:
     """Yield whole lines of the body: everything of a small file, else its beginning, middle and end."""
-    if len(files) > 1:
+    if len(files) > 1 or _is_packed(files[0]) or files[0].stat().st_size <= 3 * PART:
         for path in files:
-            with path.open("rb") as file:
-                yield _without_first_lines(_decoded(file.read(PART), dress.encoding), dress.body)
+            text = _decoded(_first_bytes(path, 3 * PART // len(files)), dress.encoding)
+            yield _without_first_lines(text, dress.body)
         return
     size = files[0].stat().st_size
     with files[0].open("rb") as file:
-        if size <= 3 * PART:
-            yield _without_first_lines(_decoded(file.read(), dress.encoding), dress.body)
-            return
         yield _without_first_lines(_decoded(file.read(PART), dress.encoding), dress.body).rpartition("\n")[0]
         for start in ((size - PART) // 2, size - PART):
             # Two-byte encodings: a part must begin at an even byte.

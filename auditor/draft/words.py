@@ -7,42 +7,49 @@ import unicodedata
 from collections.abc import Mapping, Sequence
 from types import MappingProxyType
 
+
+def _words(text: str) -> tuple[str, ...]:
+    return tuple(text.split())
+
+
 # Endings and abbreviations stand as whole words, stems (four letters and more) also at the start of a word.
 WORDS: Mapping[str, Sequence[str]] = MappingProxyType(
     {
-        "time": (
+        "time": _words(
             "time timestamp stamp date datetime t ts clock zeit zeitstempel zeitpunkt datum uhrzeit tijd tijdstip "
             "tijdstempel heure horodatage temps hora fecha tiempo utc epoch"
-        ).split(),
-        "setpoint": (
+        ),
+        "setpoint": _words(
             "setpoint set sp target reference ref setp wsp sollwert soll fuhrungsgrosse vorgabe streefwaarde streef "
             "gewenst instelwaarde setwaarde richtwaarde sw consigne cons objectif consigna referencia deseado r"
-        ).split(),
-        "measurement": (
+        ),
+        "measurement": _words(
             "measurement measured process actual pv istwert ist messwert meting gemeten mesure mesuree medida medicion "
             "valor y"
-        ).split(),
-        "quantity": (
+        ),
+        "quantity": _words(
             "level flow pressure temperature temp oxygen head pegel fullstand wasserstand niveau durchfluss druck "
             "temperatur vorlauf sauerstoff peil waterstand debiet druk temperatuur zuurstof debit pression oxygene "
             "nivel caudal presion temperatura oxigeno"
-        ).split(),
-        "actuator": (
+        ),
+        "actuator": _words(
             "actuator valve gate output out op co mv cv position pos speed opening drive pump control manipulated "
             "stellgrosse stellwert stellung ventil klappe schieber ausgang drehzahl pumpe reglerausgang klep schuif "
             "uitgang uitsturing stand toerental pomp regelklep stuursignaal vanne sortie commande ouverture vitesse "
             "pompe position valvula salida compuerta velocidad bomba apertura mando u"
-        ).split(),
-        "mode": (
+        ),
+        "mode": _words(
             "mode auto automatic manual state status betriebsart modus hand automatik bedrijfsmodus regime "
             "marche etat modo estado automatico"
-        ).split(),
-        "quality": "quality qual status qualitat gute kwaliteit qualite calidad".split(),
-        "index": "index idx nr no id row record line satz zeile regel ligne fila unnamed".split(),
+        ),
+        "quality": _words("quality qual status qualitat gute kwaliteit qualite calidad"),
+        "index": _words("index idx nr no id row record line satz zeile regel ligne fila unnamed"),
     }
 )
 AUTOMATIC = frozenset(
-    "auto automatic automatik automatisch automatique automatico aut a automat cascade cas kaskade regelung on ein".split()
+    _words(
+        "auto automatic automatik automatisch automatique automatico aut a automat cascade cas kaskade regelung on ein"
+    )
 )
 _UNITS = (
     "m mm cm km m3/s m³/s m3/h m³/h m3/d l/s l/min l/h % bar mbar pa kpa mpa hpa psi k c f °c °f degc degf rpm 1/min "
@@ -54,8 +61,8 @@ _ENDINGS: Mapping[str, str] = MappingProxyType(
     {
         "m3s": "m3/s", "m3h": "m3/h", "m3ph": "m3/h", "ls": "l/s", "lps": "l/s", "lpm": "l/min", "lmin": "l/min",
         "pct": "%", "percent": "%", "prozent": "%", "procent": "%", "degc": "°C", "celsius": "°C", "bar": "bar",
-        "mbar": "mbar", "kpa": "kPa", "mpa": "MPa", "pa": "Pa", "rpm": "rpm", "hz": "Hz", "mm": "mm", "cm": "cm", "m": "m",
-        "mgl": "mg/l", "ma": "mA", "kw": "kW", "c": "°C",
+        "mbar": "mbar", "kpa": "kPa", "mpa": "MPa", "pa": "Pa", "rpm": "rpm", "hz": "Hz", "mm": "mm", "cm": "cm",
+        "m": "m", "mgl": "mg/l", "ma": "mA", "kw": "kW", "c": "°C",
     }
 )  # fmt: skip
 _BRACKETED = re.compile(r"[\[({<]\s*([^\])}>]{1,12}?)\s*[\])}>]\s*$")
@@ -92,7 +99,7 @@ def names(header: str, role: str) -> str | None:
 
 
 def unit_of(header: str) -> str:
-    """Return the unit a header states, as in ``level [m]``, ``flow_m3h``, ``Druck in bar``; empty when it states none."""
+    """Return the unit a header states, as in ``level [m]``, ``flow_m3h``, ``Druck in bar``; empty when there is none."""
     for pattern in (_BRACKETED, _SLASHED):
         match = pattern.search(header)
         if match and is_unit(match[1]):

@@ -9,6 +9,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from itertools import product
 
 import numpy as np
 from scipy.optimize import minimize_scalar
@@ -72,12 +73,17 @@ def shift_actuator(record: Record, skew: int) -> Record:
             start=None,
             end=None,
             count=abs(skew),
-            detail=f"the actuator is logged {abs(skew)} sample{'s' * (abs(skew) > 1)} {'late' if skew > 0 else 'early'} "
-            "against the measurement",
+            detail=skew_words(skew),
             effect="actuator shifted back",
             signal="actuator",
         )
     )
+
+
+def skew_words(skew: int) -> str:
+    """Say by how much the actuator's column is late (+) or early (−)."""
+    samples = "1 sample" if abs(skew) == 1 else f"{abs(skew)} samples"
+    return f"the actuator's column is {samples} {'late' if skew > 0 else 'early'} against the measurement"
 
 
 def setpoint_moves(signals: Signals) -> bool:
@@ -87,7 +93,7 @@ def setpoint_moves(signals: Signals) -> bool:
 
 
 def lay_out(signals: Signals, lag: int, terms: Terms, *, levels: bool, thin: bool = False) -> Design:
-    """Lay out the regression for one lag; `thin` keeps enough rows to compare lags and kinds, setpoint moves included."""
+    """Lay out the regression for one lag; `thin` keeps enough rows to compare lags and kinds."""
     rows = level_rows(signals, lag, terms) if levels else difference_rows(signals, lag, terms)
     if thin:
         rows = _thinned(signals, rows)
@@ -105,7 +111,7 @@ def best_match(signals: Signals, *, saturates: bool, quantum: float = 0.0) -> Ma
     match = _search(signals, robust=False, levels=False)
     if match is None or match.fit.exact:
         return match
-    robust = saturates or _heavy_tailed(match.fit)
+    robust = saturates or _heavy_tailed(signals, match)
     if robust:
         match = _search(signals, robust=True, levels=False) or match
     if match.fit.exact or not (quantum > 0 or _noise_on_level(match.fit)):
@@ -116,7 +122,7 @@ def best_match(signals: Signals, *, saturates: bool, quantum: float = 0.0) -> Ma
 
 def _search(signals: Signals, *, robust: bool, levels: bool) -> Match | None:
     best: Match | None = None
-    for terms in _kinds(setpoint_moves(signals)):
+    for terms in _kinds(setpoint_moves(signals), len(signals.w)):
         if best is not None and best.fit.exact:
             break
         candidate = _best_lag(signals, terms, robust=robust, levels=levels)
@@ -127,15 +133,15 @@ def _search(signals: Signals, *, robust: bool, levels: bool) -> Match | None:
     return replace(best, fit=solve(lay_out(signals, best.lag, best.terms, levels=levels), robust))
 
 
-def _kinds(moves: bool) -> Iterator[Terms]:
+def _kinds(moves: bool, disturbances: int) -> Iterator[Terms]:
     """Candidates, simplest first; setpoint weight and derivative on the error only show where the setpoint moves."""
     weights = (False, True) if moves else (False,)
-    for weight in weights:
-        for integral in (False, True):
-            yield Terms(integral=integral, weight=weight)
-    for weight in weights:
-        for derivative in ("measurement", "error") if moves else ("measurement",):
-            yield Terms(integral=True, derivative=derivative, weight=weight)
+    feedforwards = (0, disturbances) if disturbances else (0,)
+    for feedforward, weight, integral in product(feedforwards, weights, (False, True)):
+        yield Terms(integral=integral, weight=weight, feedforward=feedforward)
+    derivatives = ("measurement", "error") if moves else ("measurement",)
+    for feedforward, weight, derivative in product(feedforwards, weights, derivatives):
+        yield Terms(integral=True, derivative=derivative, weight=weight, feedforward=feedforward)
 
 
 def _best_lag(signals: Signals, terms: Terms, *, robust: bool, levels: bool) -> Match | None:
@@ -161,7 +167,7 @@ def _best_lag(signals: Signals, terms: Terms, *, robust: bool, levels: bool) -> 
 
 
 def _plausible(fit: Fit, terms: Terms) -> bool:
-    """Refuse coefficients that are no controller: a derivative or an integral that works against the proportional part."""
+    """Refuse coefficients that are no controller: parts that work against each other."""
     gain, *rest = fit.coefficients
     if terms.integral:
         # The forward form's gain K + Ki is the largest of the three: a pure integral controller has only that one.
@@ -200,7 +206,8 @@ def _refined_pole(signals: Signals, terms: Terms, lag: int, *, robust: bool, lev
     low, high = _POLES[max(0, at - 1)], (*_POLES, 0.99)[at + 1]
 
     def left(pole: float) -> float:
-        return solve(lay_out(signals, lag, replace(terms, pole=pole), levels=levels, thin=True), robust, _SEARCH_PASSES).relative
+        design = lay_out(signals, lag, replace(terms, pole=pole), levels=levels, thin=True)
+        return solve(design, robust, _SEARCH_PASSES).relative
 
     found = minimize_scalar(left, bounds=(low, high), method="bounded", options={"xatol": 1e-13, "maxiter": 80})
     best = float(found.x) if found.fun < left(terms.pole) else terms.pole
@@ -214,8 +221,11 @@ def _noise_on_level(fit: Fit) -> bool:
     return power > 0 and float(np.dot(rest[1:], rest[:-1])) < -0.25 * power
 
 
-def _heavy_tailed(fit: Fit) -> bool:
-    size = np.abs(fit.residual)
+def _heavy_tailed(signals: Signals, match: Match) -> bool:
+    """Tell whether rare large moves decide the fit; says no where held samples leave most differences exactly zero."""
+    size = np.abs(match.fit.residual)
+    if float(np.mean(lay_out(signals, match.lag, match.terms, levels=False).target == 0)) > 0.5:
+        return False
     return float(np.median(size)) < thresholds.HEAVY_TAIL * float(np.sqrt(np.mean(size**2)))
 
 

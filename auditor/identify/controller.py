@@ -7,7 +7,6 @@ whether the actuator is explained by them at all. What follows from it is in `re
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -15,14 +14,17 @@ import numpy as np
 from auditor.controllers.pid import INTEGRALS, Pid
 from auditor.errors import Problem
 from auditor.identify import refusals, thresholds
-from auditor.identify.alignment import LAGS, Match, best_match, lay_out, setpoint_moves, shift_actuator
+from auditor.identify.alignment import LAGS, Match, best_match, lay_out, setpoint_moves, shift_actuator, skew_words
 from auditor.identify.gains import coefficients_of, controller_of, roundest, stated_controller, terms_of
 from auditor.identify.limits import saturates
 from auditor.identify.regression import Fit, Signals, measured, read_signals, residual_of
 from auditor.identify.residual import anti_windup_of
 from auditor.logs.record import Record
 from auditor.loop import ControllerSettings, Loop
-from auditor.text import duration, number, percent
+from auditor.text import duration, number
+
+_ROUNDING = 1e-11
+"""Relative residual of floating point."""
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -82,22 +84,23 @@ def recover_controller(record: Record, loop: Loop) -> Recovery:
     """
     settings = loop.controller
     signals = read_signals(record, settings.error_deadband if settings else 0.0)
-    trouble = refusals.before_fitting(record, signals)
-    match = None
-    if trouble is None:
-        match = best_match(signals, saturates=saturates(record), quantum=record.u_quantum or 0.0)
+    match = best_match(signals, saturates=saturates(record), quantum=record.u_quantum or 0.0)
+    refusal = refusals.dead_or_copied(signals)
+    if settings is None and match is None:
+        refusal = refusal or refusals.too_few_rows(record)
+    if refusal is not None:
+        return _refused(record, settings, refusal)
     if settings is not None:
         return _from_file(record, signals, settings, match)
-    if match is None:
-        return _refused(record, trouble or refusals.too_few_rows(record))
+    assert match is not None
     return _from_log(record, signals, match)
 
 
-def _refused(record: Record, refusal: Problem) -> Recovery:
+def _refused(record: Record, settings: ControllerSettings | None, refusal: Problem) -> Recovery:
     nothing = Pid(gain=0.0, low=record.low, high=record.high, max_rate=record.max_rate)
     return Recovery(
-        controller=nothing,
-        source="log",
+        controller=nothing if settings is None else stated_controller(settings, record),
+        source="log" if settings is None else "file",
         skew_samples=0,
         relative_residual=math.inf,
         lag_table=(),
@@ -154,7 +157,8 @@ def _from_file(record: Record, signals: Signals, settings: ControllerSettings, m
     chosen = replace(stated, integral=form)
     if settings.anti_windup is None:
         chosen = anti_windup_of(shift_actuator(record, lag), chosen)
-    reasons = [f"the controller is the loop file's; {_left_words(tried[lag, form].relative)}", *_skew_words(lag), *reasons]
+    left = _left_words(tried[lag, form].relative)
+    reasons = [f"the controller is the loop file's; {left}", *_skew_words(lag), *reasons]
     own_law = math.isinf(chosen.integral_time) and chosen.derivative_time == 0 and not setpoint_moves(signals)
     own_law = own_law and tried[lag, form].relative < thresholds.OWN_LAW
     return Recovery(
@@ -182,10 +186,10 @@ def _left_by(signals: Signals, controller: Pid, lag: int, record: Record, *, lev
 
 def _first_clearly_best(left: dict[tuple[int, str], float]) -> tuple[int, str]:
     """Return the first key whose residual no later one betters clearly; keys come nearest lag and usual form first."""
-    keys: Iterable[tuple[int, str]] = iter(left)
     best = next(iter(left))
-    for key in keys:
-        if left[key] < thresholds.LAG_BETTER * left[best]:
+    for key in left:
+        # Two exact fits differ by rounding only.
+        if left[key] < thresholds.LAG_BETTER * max(left[best], _ROUNDING):
             best = key
     return best
 
@@ -200,7 +204,7 @@ def _disagreement(record: Record, match: Match) -> str:
     time = "none" if math.isinf(own.integral_time) else duration(own.integral_time)
     return (
         f"the log does not agree with the file's gains: it shows gain {number(own.gain, 4)}, integral time {time} "
-        f"(backward form), which leaves {percent(match.fit.relative, 2)} of the actuator's movement"
+        f"(backward form), which leaves {100 * match.fit.relative:.2g} % of the actuator's movement"
     )
 
 
@@ -214,14 +218,11 @@ def _how_found(match: Match, record: Record) -> str:
 def _left_words(relative: float) -> str:
     if relative < thresholds.EXACT:
         return "it explains the actuator exactly"
-    return f"it leaves {percent(relative, 2)} of the actuator's movement"
+    return f"it leaves {100 * relative:.2g} % of the actuator's movement"
 
 
 def _skew_words(lag: int) -> list[str]:
-    if lag == 0:
-        return []
-    side = "late" if lag > 0 else "early"
-    return [f"the actuator's column is {abs(lag)} sample{'s' * (abs(lag) > 1)} {side} against the measurement"]
+    return [skew_words(lag)] if lag != 0 else []
 
 
 def _bias(record: Record, controller: Pid, lag: int) -> float | None:

@@ -1,6 +1,7 @@
 """From the coefficients of the controller's equation to a `Pid` and back.
 
-Letters as in `regression`: K of the backward form, Ki = K h / Ti, g = K Td / (Tf + h), w = K (β − 1), pole a = Tf / (Tf + h).
+Letters as in `regression`: K of the backward form, Ki = K h / Ti, g = K Td / (Tf + h), w = K (β − 1), and the
+derivative's pole a = Tf / (Tf + h).
 
 At one sample per update the three integral forms are one and the same law with K, K + Ki or K + Ki / 2 in front
 (they differ again only with a setpoint weight, and then only in what that weight is called), and the same holds after
@@ -19,8 +20,8 @@ from auditor.arrays import FloatArray
 from auditor.controllers.pid import INTEGRALS, Pid
 from auditor.identify.alignment import Match
 from auditor.identify.regression import Terms
-from auditor.loop import ControllerSettings
 from auditor.logs.record import Record
+from auditor.loop import ControllerSettings
 
 _SHARE = {"forward": 1.0, "backward": 0.0, "trapezoid": 0.5}
 """Share of Ki that the form's gain has more than the backward form's."""

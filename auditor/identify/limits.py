@@ -60,4 +60,3 @@ def _long_runs(mask: BoolArray) -> BoolArray:
     for start, stop in zip(edges[::2], edges[1::2], strict=True):
         kept[start:stop] = stop - start >= _RUN
     return kept
-

@@ -20,16 +20,16 @@ OWN_LAW_WORDS = (
 _STATE_IT = "state the controller in the loop file ([controller] gain, integral_time)"
 
 
-def before_fitting(record: Record, signals: Signals) -> Problem | None:
-    """Return why no regression can be laid out, or None."""
-    free = signals.moving
-    if int(np.count_nonzero(free)) < thresholds.ROWS_NEEDED:
-        return too_few_rows(record)
-    if float(np.ptp(signals.u[free])) == 0.0:
+def dead_or_copied(signals: Signals) -> Problem | None:
+    """Return why the columns are no loop at all, or None; says nothing about a handful of samples."""
+    good = signals.good
+    if int(np.count_nonzero(good)) < thresholds.ROWS_NEEDED:
+        return None
+    if float(np.ptp(signals.u[good])) == 0.0:
         return _unmoved("actuator", "an actuator that moves with the error")
-    if float(np.ptp(signals.y[free])) == 0.0:
+    if float(np.ptp(signals.y[good])) == 0.0:
         return _unmoved("measurement", "a measurement that moves")
-    return _copy(signals)
+    return _copy(signals) if np.count_nonzero(signals.moving) >= thresholds.ROWS_NEEDED else None
 
 
 def too_few_rows(record: Record) -> Problem:
@@ -47,7 +47,7 @@ def too_few_rows(record: Record) -> Problem:
 def after_fitting(record: Record, signals: Signals, match: Match) -> Problem | None:
     """Return why the best controller found is none, or None when it may be used."""
     left = _left_of_movement(record, signals, match)
-    if left <= thresholds.UNEXPLAINED_LIMIT or (match.levels and match.fit.relative <= thresholds.UNEXPLAINED_LEVEL):
+    if left <= thresholds.UNEXPLAINED_LIMIT or _level_explained(record, match):
         at_edge = abs(match.lag) == thresholds.LONGEST_SKEW and match.fit.relative > thresholds.UNEXPLAINED_LEVEL
         return _far_off(match) if at_edge else None
     return Problem(
@@ -57,6 +57,12 @@ def after_fitting(record: Record, signals: Signals, match: Match) -> Problem | N
         expected=f"at most {percent(thresholds.UNEXPLAINED_LIMIT)}",
         do=_likely(record) + "; " + _STATE_IT,
     )
+
+
+def _level_explained(record: Record, match: Match) -> bool:
+    """True when the actuator's level is explained to its own noise, or to its rounding."""
+    rounding_only = match.fit.scale <= 0.5 * (record.u_quantum or 0.0)
+    return match.levels and (rounding_only or match.fit.relative <= thresholds.UNEXPLAINED_LEVEL)
 
 
 def _left_of_movement(record: Record, signals: Signals, match: Match) -> float:

@@ -7,7 +7,7 @@ filtered derivative signal, ``x[k] = a x[k−1] + s[k] − s[k−1]``, a = Tf/(T
     u[k + lag] − u[k + lag − 1] = the differences of the right side    differences
 
 K is the gain of the backward form, Ki = K h / Ti, g = K Td / (Tf + h), w = K (β − 1). The forward and the trapezoid
-form are the same equation with K + Ki and K + Ki / 2 in place of K.
+form are the same equation with K + Ki and K + Ki / 2 in place of K. Declared disturbances may enter like r: feedforward.
 """
 
 from __future__ import annotations
@@ -35,17 +35,21 @@ _Flags = TypeVar("_Flags", BoolArray, IntArray)
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Terms:
-    """What a candidate controller is made of; `derivative` is "measurement", "error" or None, `pole` its a."""
+    """What a candidate controller is made of.
+
+    `derivative` is "measurement", "error" or None, `pole` its a; `feedforward` counts declared disturbances.
+    """
 
     integral: bool = False
     derivative: str | None = None
     weight: bool = False
+    feedforward: int = 0
     pole: float = 0.0
 
     @property
     def count(self) -> int:
         """Coefficients, the pole included."""
-        return 1 + self.integral + 2 * (self.derivative is not None) + self.weight
+        return 1 + self.integral + 2 * (self.derivative is not None) + self.weight + self.feedforward
 
     @property
     def kind(self) -> str:
@@ -55,7 +59,10 @@ class Terms:
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
 class Design:
-    """One regression: columns (n, p) in the order K, Ki, g, w; target (n,); stretch (n,) or None for differences."""
+    """One regression: columns (n, p) in the order K, Ki, g, w, feedforward; target and stretch (n,).
+
+    `stretch` numbers the unbroken stretches, each with its own constant; None for differences.
+    """
 
     columns: FloatArray
     target: FloatArray
@@ -64,7 +71,7 @@ class Design:
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
 class Fit:
-    """Coefficients, residual (n,), its scale (rms, or mean absolute value when robust) and the scale over the target's."""
+    """Coefficients, residual (n,), its scale (rms; mean absolute value when robust), and that over the target's."""
 
     coefficients: FloatArray
     residual: FloatArray
@@ -91,6 +98,7 @@ class Signals:
     ----------
     e, y, r, u : ndarray, shape (N,)
         `e` with the controller's own dead-band.
+    w : ndarray, shape (n_w, N)
     good, free, moving : ndarray of bool, shape (N,)
     age : ndarray of int, shape (N,)
         Samples since the span began, −1 outside.
@@ -102,6 +110,7 @@ class Signals:
     y: FloatArray
     r: FloatArray
     u: FloatArray
+    w: FloatArray
     good: BoolArray
     free: BoolArray
     moving: BoolArray
@@ -117,7 +126,8 @@ def read_signals(record: Record, deadband: float = 0.0) -> Signals:
     free = good & ~at_limit(record)
     e = np.where(np.abs(record.e) <= deadband, 0.0, record.e) if deadband > 0 else record.e
     e, y, r, u = (np.where(good, x, 0.0) for x in (e, record.y, record.r, record.u))
-    return Signals(e=e, y=y, r=r, u=u, good=good, free=free, moving=free & ~slewing(record), age=age)
+    w = np.where(good & np.isfinite(record.w), record.w, 0.0)
+    return Signals(e=e, y=y, r=r, u=u, w=w, good=good, free=free, moving=free & ~slewing(record), age=age)
 
 
 def derivative_state(signals: Signals, terms: Terms) -> FloatArray:
@@ -156,6 +166,7 @@ def difference_design(signals: Signals, lag: int, terms: Terms, rows: IntArray) 
         step.append(x[rows] - x[rows - 1])
     if terms.weight:
         step.append(signals.r[rows] - signals.r[rows - 1])
+    step += [w[rows] - w[rows - 1] for w in signals.w[: terms.feedforward]]
     target = signals.u[rows + lag] - signals.u[rows + lag - 1]
     return Design(columns=np.stack(step, axis=1), target=target, stretch=None)
 
@@ -169,6 +180,7 @@ def level_design(signals: Signals, lag: int, terms: Terms, rows: IntArray) -> De
         level.append(derivative_state(signals, terms))
     if terms.weight:
         level.append(signals.r)
+    level += list(signals.w[: terms.feedforward])
     broken = ~_shifted(signals.free, lag) | ~signals.good | (signals.age == 0)
     stretch = np.unique(np.cumsum(broken)[rows], return_inverse=True)[1].astype(np.int64)
     columns = np.stack([x[rows] for x in level], axis=1)
@@ -204,12 +216,20 @@ def residual_of(design: Design, coefficients: FloatArray, weights: FloatArray) -
 
 
 def _weighted(design: Design, weights: FloatArray) -> FloatArray:
-    root = np.sqrt(weights)
-    columns = _centred(design.columns, design.stretch, weights) * root[:, None]
-    target = _centred(design.target[:, None], design.stretch, weights)[:, 0] * root
-    size = np.sqrt(np.sum(columns**2, axis=0))
+    """Solve the normal equations, then twice for what is left, which brings back the digits that squaring costs."""
+    columns = _centred(design.columns, design.stretch, weights)
+    rest = _centred(design.target[:, None], design.stretch, weights)[:, 0]
+    size = np.sqrt(np.sum(weights[:, None] * columns**2, axis=0))
     size[size == 0] = 1.0
-    return np.asarray(np.linalg.lstsq(columns / size, target, rcond=1e-13)[0] / size)
+    columns = columns / size
+    weighted = columns.T * weights
+    inverse = np.linalg.pinv(weighted @ columns, rcond=1e-14, hermitian=True)
+    total = np.zeros(len(size))
+    for _ in range(3):
+        step = inverse @ (weighted @ rest)
+        total += step
+        rest = rest - columns @ step
+    return np.asarray(total / size)
 
 
 def _centred(values: FloatArray, stretch: IntArray | None, weights: FloatArray) -> FloatArray:

@@ -12,10 +12,10 @@ from dataclasses import dataclass, replace
 import numpy as np
 from scipy.optimize import minimize_scalar
 
-from auditor.arrays import FloatArray, read_only
+from auditor.arrays import BoolArray, FloatArray, read_only
 from auditor.controllers.pid import Pid
 from auditor.identify import thresholds
-from auditor.identify.limits import saturates
+from auditor.identify.limits import at_limit, saturates, slewing
 from auditor.identify.plant import Plant
 from auditor.identify.recorded import pack_form, pack_settings
 from auditor.kernels.recorded import explain_span, replay_every_sample
@@ -26,6 +26,12 @@ _FLOATING = 1e-12
 
 _NOTHING_LEFT = 1e-9
 """Null replays below this differ by floating point only."""
+
+_MEMORY = 3
+"""Earlier moves of the error that may explain rho: a derivative's filter forgets in about as many samples."""
+
+_DIVERGED = 1e6
+"""Deviations of the error beyond which a replay has diverged."""
 
 _TRACKING = (0.0, 0.25, 0.5, 1.0, 2.0)
 """Tracking times tried, as shares of the integral time."""
@@ -68,7 +74,9 @@ def controller_residual(record: Record, controller: Pid) -> ResidualResult:
     return ResidualResult(rho=read_only(rho), v=read_only(v))
 
 
-def null_replay(record: Record, controller: Pid, plant: Plant, rho: FloatArray | None = None) -> float:
+def null_replay(
+    record: Record, controller: Pid, plant: Plant, rho: FloatArray | None = None, *, warm_up: int = 0
+) -> float:
     """Replay the record with an update at every sample and return std(replay − record) / std(error).
 
     Parameters
@@ -79,6 +87,9 @@ def null_replay(record: Record, controller: Pid, plant: Plant, rho: FloatArray |
         Filters only the difference between replayed and recorded actuator (2.1).
     rho : ndarray, shape (N,), optional
         Unexplained part of the actuator to inject [actuator unit].
+    warm_up : int
+        Samples at the beginning of each span that are replayed and not counted: a derivative starts there at zero,
+        whatever it was in the record. Spans too short for it count whole.
 
     Returns
     -------
@@ -86,19 +97,23 @@ def null_replay(record: Record, controller: Pid, plant: Plant, rho: FloatArray |
         0 when the record comes back; infinite when the replay diverges or the error never moves.
     """
     away = _null_deviation(record, controller, plant, rho)
+    counted = np.zeros(len(record), dtype=np.bool_)
+    for span in record.spans:
+        counted[span.start + (warm_up if len(span) > 2 * warm_up else 0) : span.stop] = True
+    away, deviation = away[counted], record.error_deviation
     if len(away) == 0 or not np.all(np.isfinite(away)):
         return math.inf
-    size = float(np.max(np.abs(away)))
-    if size == 0.0:
+    if not np.any(away):
         return 0.0
-    deviation = record.error_deviation
-    # Scaled first: the square of a diverging replay would overflow.
-    return size * float(np.std(away / size)) / deviation if deviation > 0 else math.inf
+    if deviation == 0.0 or float(np.max(np.abs(away))) > _DIVERGED * deviation:
+        return math.inf
+    return float(np.std(away)) / deviation
 
 
 def unexplained_movement(record: Record, controller: Pid) -> float:
     """Return the mean movement of rho per sample [actuator unit]: 0 for the right controller on an exact log."""
-    return float(np.mean(np.abs(moves(controller_residual(record, controller).rho, record))))
+    moved = np.abs(moves(controller_residual(record, controller).rho)[within(record)])
+    return float(np.mean(moved)) if len(moved) else 0.0
 
 
 def anti_windup_of(record: Record, controller: Pid) -> Pid:
@@ -112,7 +127,8 @@ def anti_windup_of(record: Record, controller: Pid) -> Pid:
     best = min(_schemes(controller), key=lambda scheme: unexplained_movement(record, scheme))
     best = best if controller.tracking_time > 0 else _sharpened(record, best)
     # Schemes that explain equally much differ by rounding only.
-    return best if unexplained_movement(record, best) < thresholds.SCHEME_BETTER * own - _resolution(record) / len(record) else controller
+    floor = thresholds.SCHEME_BETTER * own - _resolution(record) / len(record)
+    return best if unexplained_movement(record, best) < floor else controller
 
 
 def choose_anti_windup(record: Record, controller: Pid, plant: Plant) -> Pid:
@@ -127,29 +143,37 @@ def explained_by_error(rho: FloatArray, record: Record) -> float:
     """Return the share of rho's movement that the error, its sum and declared disturbances account for, 0…1.
 
     Differences are compared (of rho with those of e, e itself and those of w): rho and the sum of e both wander, and
-    two wandering series explain each other by chance. Wrong gains make this share 1.
+    two wandering series explain each other by chance. The error's three moves before let a derivative take part.
+    Samples at a limit or slewing, and those right after, are left out: rho is held there. Wrong gains make this share 1.
     """
-    error = [moves(record.e, record), _later(record.e, record)]
-    return _share(moves(rho, record), [*error, *(moves(w, record) for w in record.w)])
+    moved = moves(record.e)
+    before = [np.concatenate([np.full(lag, np.nan), moved[: len(moved) - lag]]) for lag in range(1, _MEMORY + 1)]
+    return _share(rho, record, [moved, record.e, *before, *(moves(w) for w in record.w)])
 
 
 def explained_by_disturbances(rho: FloatArray, record: Record) -> float:
     """Return the share of rho's movement that declared disturbances alone account for, 0…1."""
-    return _share(moves(rho, record), [moves(w, record) for w in record.w])
+    return _share(rho, record, [moves(w) for w in record.w])
 
 
-def moves(signal: FloatArray, record: Record) -> FloatArray:
-    """Differences of `signal` inside the spans, none across a break, shape (M,)."""
-    return np.concatenate([np.zeros(0), *(np.diff(signal[span.start : span.stop]) for span in record.spans)])
+def moves(signal: FloatArray) -> FloatArray:
+    """Return signal[k] − signal[k − 1], NaN at the first sample, shape (N,)."""
+    return np.diff(signal, prepend=np.nan)
 
 
-def _later(signal: FloatArray, record: Record) -> FloatArray:
-    return np.concatenate([np.zeros(0), *(signal[span.start + 1 : span.stop] for span in record.spans)])
+def within(record: Record) -> BoolArray:
+    """True where this sample and the one before belong to one span, shape (N,)."""
+    inside = record.in_span
+    for span in record.spans:
+        inside[span.start] = False
+    return inside
 
 
-def _share(target: FloatArray, columns: Sequence[FloatArray]) -> float:
-    usable = np.isfinite(target)
-    for column in columns:
+def _share(rho: FloatArray, record: Record, columns: Sequence[FloatArray]) -> float:
+    held = at_limit(record) | slewing(record)
+    usable = within(record) & ~held & ~np.concatenate([[True], held[:-1]])
+    target = moves(rho)
+    for column in (target, *columns):
         usable &= np.isfinite(column)
     target = target[usable]
     power = float(target @ target)
@@ -163,7 +187,7 @@ def _share(target: FloatArray, columns: Sequence[FloatArray]) -> float:
 
 
 def _null_deviation(record: Record, controller: Pid, plant: Plant, rho: FloatArray | None) -> FloatArray:
-    """ỹ − y inside the spans, shape (M,)."""
+    """ỹ − y, zero outside the spans, shape (N,)."""
     replayed = record.y.copy()
     injected = read_only(np.zeros(len(record)) if rho is None else rho)
     pid, form = pack_settings(controller, record), pack_form(controller)
@@ -174,7 +198,7 @@ def _null_deviation(record: Record, controller: Pid, plant: Plant, rho: FloatArr
             y, r, u, injected, span.start, span.stop,
             A, B0, B1, C, plant.delay, record.y_quantum or 0.0, pid, form, replayed,
         )  # fmt: skip
-    return np.asarray((replayed - record.y)[record.in_span])
+    return np.where(record.in_span, replayed - record.y, 0.0)
 
 
 def _resolution(record: Record) -> float:

@@ -1,6 +1,7 @@
 """Numbers that decide about a recovered controller, each with its reason.
 
-"Relative residual" is what a controller leaves of the actuator's own movement, 0 for an exact log, 1 for nothing explained.
+"Relative residual" is what a controller leaves of the actuator's own movement: 0 for an exact log, 1 for nothing
+explained.
 """
 
 from __future__ import annotations
@@ -12,7 +13,7 @@ NULL_LIMIT = 0.10
 """From here on a replay is about another controller than the recorded one: at most limited trust (method, §2)."""
 
 EXPLAINED_SHARE = 0.90
-"""Above `NULL_LIMIT` an answer is given only when this share of the unexplained actuator has a known origin (method, §2)."""
+"""Above `NULL_LIMIT` an answer needs this share of the unexplained actuator to have a known origin (method, §2)."""
 
 LONGEST_SKEW = 3
 """Samples by which the actuator's column may be early or late; further shifts mean another clock."""
@@ -36,7 +37,7 @@ BETTER = 20.0
 information criterion; residuals of real logs are correlated, which makes that criterion ten times too eager."""
 
 DERIVATIVE_BETTER = 0.7
-"""A derivative must also bring the residual down to this share: with any coloured rest, one more delayed error helps a bit."""
+"""A derivative must also bring the residual down to this share: any coloured rest likes one more delayed error."""
 
 OWN_LAW = 1e-3
 """Relative residual below which the actuator is a static function of the measurement, rounding of the log included."""

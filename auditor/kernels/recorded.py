@@ -10,7 +10,7 @@ import math
 import numpy as np
 
 from auditor.arrays import FloatArray, IntArray
-from auditor.kernels import rows as R
+from auditor.kernels import rows
 from auditor.kernels.control import begin, clip, move, run_lane
 from auditor.kernels.jit import compiled
 
@@ -18,9 +18,9 @@ from auditor.kernels.jit import compiled
 @compiled
 def see(y: float, r: float, now: FloatArray) -> None:
     """Put one sample where `begin` looks for it."""
-    now[R.MEASUREMENT, 0] = y
-    now[R.SETPOINT, 0] = r
-    now[R.ERROR, 0] = r - y
+    now[rows.MEASUREMENT, 0] = y
+    now[rows.SETPOINT, 0] = r
+    now[rows.ERROR, 0] = r - y
 
 
 @compiled
@@ -34,12 +34,12 @@ def explain_span(
     actuator: I ← I + u − v − rho with back-calculation at once; other schemes, and an actuator limited in its rate,
     keep their own anti-windup, so that injecting rho returns the record with every scheme.
     """
-    now = np.zeros((R.SIGNALS, 1))
-    control = np.zeros((R.CONTROL_ROWS, 1))
-    free = np.zeros((R.CONTROL_ROWS, 1))
-    count = np.zeros((R.COUNT_ROWS, 1), dtype=np.int64)
+    now = np.zeros((rows.SIGNALS, 1))
+    control = np.zeros((rows.CONTROL_ROWS, 1))
+    free = np.zeros((rows.CONTROL_ROWS, 1))
+    count = np.zeros((rows.COUNT_ROWS, 1), dtype=np.int64)
     unlimited = pid.copy()
-    unlimited[R.LOW], unlimited[R.HIGH] = -np.inf, np.inf
+    unlimited[rows.LOW], unlimited[rows.HIGH] = -np.inf, np.inf
     see(y[start], r[start], now)
     begin(control, count, now, u[start], pid, form)
     rho[start], v[start] = 0.0, u[start]
@@ -47,14 +47,14 @@ def explain_span(
         free[:, :] = control
         run_lane(0, y[k], r[k], 0.0, 1.0, 0.0, free, unlimited, form)
         run_lane(0, y[k], r[k], rho[k - 1], 1.0, 0.0, control, pid, form)
-        v[k] = free[R.WOULD, 0]
-        position = control[R.WOULD, 0]
-        if not math.isinf(pid[R.STEP]):
-            position = u[k - 1] + clip(position - u[k - 1], -pid[R.STEP], pid[R.STEP])
+        v[k] = free[rows.WOULD, 0]
+        position = control[rows.WOULD, 0]
+        if not math.isinf(pid[rows.STEP]):
+            position = u[k - 1] + clip(position - u[k - 1], -pid[rows.STEP], pid[rows.STEP])
         if abs(position - u[k]) <= resolution:
             rho[k] = rho[k - 1]
-            if pid[R.INTEGRAL_STEP] != 0.0:
-                control[R.INTEGRAL, 0] += u[k] - position
+            if pid[rows.INTEGRAL_STEP] != 0.0:
+                control[rows.INTEGRAL, 0] += u[k] - position
         else:
             rho[k] = u[k] - v[k]
             control[:, :] = free
@@ -67,9 +67,9 @@ def replay_every_sample(
     pid: FloatArray, form: IntArray, replayed: FloatArray,
 ) -> None:  # fmt: skip
     """Replay samples start…stop−1 with an update at each (2.1, 3.1–3.4); fill the replayed measurement."""
-    now = np.zeros((R.SIGNALS, 1))
-    control = np.zeros((R.CONTROL_ROWS, 1))
-    count = np.zeros((R.COUNT_ROWS, 1), dtype=np.int64)
+    now = np.zeros((rows.SIGNALS, 1))
+    control = np.zeros((rows.CONTROL_ROWS, 1))
+    count = np.zeros((rows.COUNT_ROWS, 1), dtype=np.int64)
     ring = delay + 2
     past = np.zeros(ring)
     dx = np.zeros(len(C))
@@ -86,9 +86,9 @@ def replay_every_sample(
             begin(control, count, now, u[k], pid, form)
         else:
             run_lane(0, replayed[k], r[k], rho[k], 1.0, 0.0, control, pid, form)
-            control[R.COMMAND, 0] = control[R.WOULD, 0]
+            control[rows.COMMAND, 0] = control[rows.WOULD, 0]
             move(control, u[k], pid)
-        past[t % ring] = control[R.DEVIATION, 0]
+        past[t % ring] = control[rows.DEVIATION, 0]
         for i in range(len(C)):
             following[i] = B0[i] * past[(t - delay) % ring] + B1[i] * past[(t - delay - 1) % ring]
             for j in range(len(C)):

@@ -128,10 +128,14 @@ def _check_stated(source: LogSource, label: str) -> None:
     if source.delimiter is not None and (len(source.delimiter) != 1 or source.delimiter in '\r\n"'):
         found = repr(source.delimiter)
         what = "The delimiter must be one character."
-        problems.append(Problem(what=what, where="[log] delimiter", found=found, do=f"leave it out to have {label} looked at"))
+        problems.append(
+            Problem(what=what, where="[log] delimiter", found=found, do=f"leave it out to have {label} looked at")
+        )
     if source.decimal not in (None, ".", ","):
         what = "The decimal sign must be a point or a comma."
-        problems.append(Problem(what=what, where="[log] decimal", found=repr(source.decimal), do="correct or leave out"))
+        problems.append(
+            Problem(what=what, where="[log] decimal", found=repr(source.decimal), do="correct or leave out")
+        )
     if problems:
         raise LogError(*problems)
 

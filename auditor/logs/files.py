@@ -13,7 +13,7 @@ import zipfile
 import zlib
 from collections.abc import Iterable
 from pathlib import Path
-from typing import IO
+from typing import IO, cast
 from urllib.parse import urlparse
 from urllib.request import url2pathname
 
@@ -69,7 +69,9 @@ def resolve(source: LogSource) -> tuple[Path, ...]:
         except LogError as error:
             problems += error.problems
     if not source.paths:
-        problems.append(Problem(what="No log is named.", where="[log] path", do="give a file, a list, a pattern or a folder"))
+        problems.append(
+            Problem(what="No log is named.", where="[log] path", do="give a file, a list, a pattern or a folder")
+        )
     raise_all(LogError, problems)
     return tuple(found)
 
@@ -124,7 +126,9 @@ def _in_pattern(path: Path, entry: str) -> list[Path]:
 
 def _missing(path: Path, entry: str) -> Problem:
     if not path.parent.is_dir():
-        return Problem(what="The log does not exist, and neither does its folder.", where=entry, do="correct [log] path")
+        return Problem(
+            what="The log does not exist, and neither does its folder.", where=entry, do="correct [log] path"
+        )
     names = sorted(p.name for p in path.parent.iterdir())
     close = nearest(path.name, names)
     do = f'did you mean "{close}"?' if close else "correct [log] path; it starts from the loop file's folder"
@@ -155,7 +159,7 @@ def open_bytes(path: Path) -> IO[bytes]:
     """Open a file for reading, unpacked when it is gzip."""
     with path.open("rb") as file:
         packed = file.read(2) == GZIP
-    return gzip.open(path, "rb") if packed else path.open("rb")
+    return cast("IO[bytes]", gzip.open(path, "rb")) if packed else path.open("rb")
 
 
 def open_text(path: Path, encoding: str) -> IO[str]:

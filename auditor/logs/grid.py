@@ -18,6 +18,8 @@ SAME_STEP = 0.05
 _TOLERANCE = 0.25
 _ON_CLOCK = 0.1
 _CONCENTRATED = 0.8
+_SITTING = 1e-5
+_UNSEEN = 0.01
 _FEWEST_MOVES = 20
 
 
@@ -79,7 +81,7 @@ class Grid:
 
 def typical_spacing(beats: IntArray) -> float:
     """Return the median distance of neighbouring stamps [s]."""
-    return float(np.median(beats[1:] - beats[:-1])) / 1e9
+    return float(np.median(thinned(beats[1:]) - thinned(beats[:-1]))) / 1e9
 
 
 def lay_grid(stamps: IntArray, beats: IntArray, moves: IntArray, period: float, on_change: bool) -> Grid:
@@ -101,9 +103,10 @@ def lay_grid(stamps: IntArray, beats: IntArray, moves: IntArray, period: float, 
     step = period if on_change else typical_spacing(beats)
     step = period if abs(step / period - 1) < SAME_STEP else step
     unit, unevenness = _unevenness(beats, period, step)
-    regular = float(np.median(np.abs(unevenness))) < _ON_CLOCK
+    regular = _usually_on(unevenness)
     tolerance = _TOLERANCE * min(period, step) if regular else 1e-6 * period
     anchor, phase_from = _anchor(beats, moves, period, step)
+    anchor = _plain(anchor, beats, min(period, step))
     instant = np.ceil(((stamps - anchor) / 1e9 - tolerance) / period).astype(np.int64)
     first = int(instant[0])
     instant -= first
@@ -126,9 +129,14 @@ def _unevenness(beats: IntArray, period: float, step: float) -> tuple[float, Flo
     """Return the spacing the beats keep and how far each is off it, in parts of that spacing."""
     spacing = (beats[1:] - beats[:-1]) / 1e9
     on_period = _off_multiple(spacing, period)
-    if step == period or (step > period and float(np.median(np.abs(on_period))) < _ON_CLOCK):
+    if step == period or (step > period and _usually_on(on_period)):
         return period, on_period
     return step, _off_multiple(spacing, step)
+
+
+def _usually_on(unevenness: FloatArray) -> bool:
+    """Tell whether most stamps are near a multiple of their spacing."""
+    return float(np.median(np.abs(thinned(unevenness)))) < _ON_CLOCK
 
 
 def _off_multiple(spacing: FloatArray, unit: float) -> FloatArray:
@@ -147,6 +155,18 @@ def _anchor(beats: IntArray, moves: IntArray, period: float, step: float) -> tup
         if concentration > _CONCENTRATED:
             return first + offset, "actuator"
     return first + _typical_offset(beats, first, step)[0], "stamps"
+
+
+def _plain(anchor: int, beats: IntArray, unit: float) -> int:
+    """Return a rounder time close by, where the stamps scatter around the anchor instead of sitting on it."""
+    phase = (thinned(beats) - anchor) / (unit * 1e9)
+    if float(np.median(np.abs(phase - np.rint(phase)))) < _SITTING:
+        return anchor
+    for size in (10**9, 10**8, 10**7, 10**6):
+        near = round(anchor / size) * size
+        if abs(near - anchor) < _UNSEEN * unit * 1e9:
+            return near
+    return anchor
 
 
 def _typical_offset(stamps: IntArray, origin: int, unit: float) -> tuple[int, float]:

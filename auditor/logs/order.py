@@ -117,13 +117,14 @@ def _without_strays(ordered: IntArray) -> tuple[int, int]:
 def _far_end(stamps: IntArray, most: int) -> tuple[int, int]:
     """Count the rows at the head, else at the tail, that a gap longer than the rest of the log sets apart."""
     few = min(most, len(stamps) // 2 - 1)
-    gaps = (stamps[1:] - stamps[:-1]).astype(np.float64)
-    head = int(np.argmax(gaps[:few])) if few > 0 else 0
-    if few > 0 and gaps[head] > float(stamps[-1] - stamps[head + 1]):
-        return head + 1, 0
-    tail = len(gaps) - 1 - int(np.argmax(gaps[::-1][:few])) if few > 0 else 0
-    if few > 0 and gaps[tail] > float(stamps[tail] - stamps[0]):
-        return 0, len(stamps) - 1 - tail
+    if few <= 0:
+        return 0, 0
+    first, last = np.diff(stamps[: few + 1]), np.diff(stamps[-few - 1 :])
+    head, tail = int(np.argmax(first)) + 1, few - int(np.argmax(last))
+    if first[head - 1] > stamps[-1] - stamps[head]:
+        return head, 0
+    if last[few - tail] > stamps[-tail - 1] - stamps[0]:
+        return 0, tail
     return 0, 0
 
 
@@ -131,11 +132,11 @@ def _overlaps(time: IntArray, stamps: IntArray) -> BoolArray:
     """Mark the `stamps` in stretches that a clock set back has covered twice; `time` as recorded.
 
     Rows that merely arrive late leave no more stamps in the stretch than usual; a repeated stretch holds about
-    twice as many, and nobody can tell which of its rows came first.
+    twice as many, and nobody can tell which of its rows came first. Rows in no order at all tell nothing.
     """
     mark = np.zeros(len(stamps) + 1, dtype=np.int64)
     behind = np.flatnonzero(time[1:] < time[:-1])
-    if len(behind) == 0 or len(stamps) < 3:
+    if len(behind) == 0 or len(behind) > max(_FEW, _SHARE * len(time)):
         return mark[:-1] != 0
     start, end = time[behind + 1], time[behind]
     own = np.unique(time)
@@ -143,7 +144,8 @@ def _overlaps(time: IntArray, stamps: IntArray) -> BoolArray:
     twice = there > 1.5 * ((end - start) / _usual_spacing(time) + 1) + 1
     np.add.at(mark, np.searchsorted(stamps, start[twice], side="left"), 1)
     np.add.at(mark, np.searchsorted(stamps, end[twice], side="right"), -1)
-    return np.cumsum(mark[:-1]) > 0
+    overlapped: BoolArray = np.cumsum(mark[:-1]) > 0
+    return overlapped
 
 
 def _usual_spacing(time: IntArray) -> float:
@@ -151,4 +153,3 @@ def _usual_spacing(time: IntArray) -> float:
     spacing = time[1:] - time[:-1]
     forward = spacing[spacing > 0]
     return float(np.median(forward)) if len(forward) else 1.0
-

@@ -2,15 +2,19 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import TypeVar
 
 import pyarrow as pa
 
-from auditor.errors import Problem
+from auditor.errors import LogError, Problem, raise_all
 from auditor.logs.findings.base import Finding
 from auditor.loop import Loop
 from auditor.text import nearest
+
+_Item = TypeVar("_Item")
+_Result = TypeVar("_Result")
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -110,3 +114,33 @@ def _missing(name: str, key: str, names: Sequence[str], label: str) -> Problem:
         do = f"set {key} to one of the columns found"
     what = f'The log has no column "{name}".'
     return Problem(what=what, where=label, found=f"columns {shown}", expected=f'"{name}", named by {key}', do=do)
+
+
+def for_all(read: Callable[[_Item], _Result], items: Iterable[_Item]) -> list[_Result]:
+    """Apply `read` to every item; the problems of all of them are raised together, alike ones as one.
+
+    Raises
+    ------
+    LogError
+        When `read` raised it for at least one item.
+    """
+    results: list[_Result] = []
+    problems: list[Problem] = []
+    for item in items:
+        try:
+            results.append(read(item))
+        except LogError as error:
+            problems += error.problems
+    raise_all(LogError, merged(problems))
+    return results
+
+
+def merged(problems: Sequence[Problem]) -> list[Problem]:
+    """Say a problem that many files share once, with the first file and the number of others."""
+    alike: dict[tuple[str, str, str], list[Problem]] = {}
+    for problem in problems:
+        alike.setdefault((problem.what, problem.expected, problem.do), []).append(problem)
+    return [
+        replace(group[0], where=f"{group[0].where} and {len(group) - 1} more") if len(group) > 1 else group[0]
+        for group in alike.values()
+    ]

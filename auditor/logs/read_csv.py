@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import csv
 import itertools
-from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
 
@@ -105,9 +104,7 @@ def _parse_as(path: Path, dress: Dress, wanted: Wanted, odd: _OddRows) -> pa.Tab
         encoding="utf-8" if dress.encoding == "utf-8-sig" else dress.encoding,
         block_size=_BLOCK,
     )
-    cut = pa.csv.ParseOptions(
-        delimiter=dress.delimiter, newlines_in_values=dress.multiline, invalid_row_handler=odd
-    )
+    cut = pa.csv.ParseOptions(delimiter=dress.delimiter, newlines_in_values=dress.multiline, invalid_row_handler=odd)
     convert = pa.csv.ConvertOptions(
         include_columns=columns,
         column_types={name: pa.string() for name in columns},
@@ -143,7 +140,9 @@ def _check_rows(rows: int, dress: Dress, odd: _OddRows, label: str) -> None:
         raise LogError(_too_odd(f"{len(odd.texts)} of {rows + len(odd.texts)}", dress, odd, label))
     if rows == 0:
         found = f"a header with {len(dress.names)} columns and no row below it"
-        raise LogError(Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out"))
+        raise LogError(
+            Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out")
+        )
 
 
 def _findings(path: Path, dress: Dress, odd: _OddRows, label: str) -> tuple[Finding, ...]:
@@ -168,7 +167,9 @@ def _odd_findings(path: Path, dress: Dress, odd: _OddRows, label: str) -> list[F
         findings.append(_note("footer", len(below), f"{label}, below the last row: {shown}", "skipped"))
     broken = len(odd.texts) - len(below)
     if broken:
-        detail = f"{label}: {broken} lines have not {dress.cells} cells, the first at {among[0] if among else odd.example}"
+        detail = (
+            f"{label}: {broken} lines have not {dress.cells} cells, the first at {among[0] if among else odd.example}"
+        )
         findings.append(_note("broken-row", broken, detail, "skipped"))
     return findings
 
@@ -223,6 +224,3 @@ def _note(kind: str, count: int, detail: str, effect: str) -> Finding:
 
 def _short(text: str) -> str:
     return text if len(text) <= 80 else text[:79] + "…"
-
-
-__all__: Sequence[str] = ["read_csv"]

@@ -36,10 +36,14 @@ def read_parquet(path: Path, label: str, wanted: Wanted) -> RawTable:
             table = file.read(columns=_columns(wanted, names))
     except (pa.ArrowException, OSError) as error:
         found = str(error).splitlines()[0]
-        raise LogError(Problem(what="The Parquet file is damaged.", where=label, found=found, do="write it again")) from None
+        raise LogError(
+            Problem(what="The Parquet file is damaged.", where=label, found=found, do="write it again")
+        ) from None
     if table.num_rows == 0:
         found = f"{len(names)} columns and no row"
-        raise LogError(Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out"))
+        raise LogError(
+            Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out")
+        )
     return _raw_table(_single_values(table, label), wanted, label)
 
 

@@ -57,5 +57,8 @@ def hold(values: FloatArray, longest: int | None = None, broken: BoolArray | Non
 
 
 def thinned(values: npt.NDArray[Any], most: int = FORMATIVE_SAMPLE) -> npt.NDArray[Any]:
-    """Return every n-th value, n the smallest stride that leaves at most `most` of them."""
-    return values[:: max(1, -(-len(values) // most))]
+    """Return every n-th value, n the smallest odd stride that leaves at most `most` of them.
+
+    An odd stride sees both kinds of rows where two kinds alternate.
+    """
+    return values[:: max(1, -(-len(values) // most)) | 1]

@@ -164,15 +164,17 @@ def _fill(fields: Fields, rows: IntArray, digits: _Bytes, layout: _Layout) -> No
     if layout.spans is None:
         return
 
+    spans = layout.spans
+
     def value(name: str) -> IntArray:
-        return _number(digits, layout.spans.get(name, (0, 0)))  # type: ignore[union-attr] - not None, see above
+        return _number(digits, spans.get(name, (0, 0)))
 
     year, first, second = _date(value, layout)
     clock, possible, leap = _clock(value, layout, digits)
     offset, offset_possible = _offset(value, layout)
     fields.year[rows], fields.first[rows], fields.second[rows] = year, first, second
     fields.clock[rows], fields.offset[rows], fields.leap[rows] = clock, offset, leap
-    fields.unsettled[rows] = "A" in layout.spans
+    fields.unsettled[rows] = "A" in spans
     fields.state[rows] = np.where(possible & offset_possible, READ, IMPOSSIBLE)
 
 
@@ -194,7 +196,8 @@ def _date(value: _Value, layout: _Layout) -> tuple[IntArray, IntArray, IntArray]
         return year, value("A"), value("B")
     month = value("m")
     if "b" in layout.words:
-        month = month + MONTHS.index(layout.words["b"][:3].decode().lower()) + 1
+        name = layout.words["b"].decode().lower()
+        month = month + next(k for k, full in enumerate(MONTHS, start=1) if full.startswith(name))
     return year, month, value("d")
 
 

@@ -10,10 +10,21 @@ import re
 
 from auditor.errors import LogError, Problem
 
-MONTHS = ("jan", "feb", "mar", "apr", "may", "jun", "jul", "aug", "sep", "oct", "nov", "dec")
-_MONTH_NAMES = "|".join(
-    "january february march april may june july august september october november december".split() + list(MONTHS)
+MONTHS = (
+    "january",
+    "february",
+    "march",
+    "april",
+    "may",
+    "june",
+    "july",
+    "august",
+    "september",
+    "october",
+    "november",
+    "december",
 )
+_MONTH_NAMES = "|".join([*MONTHS, *(name[:3] for name in MONTHS)])
 
 _ZONE = r"(?:(?P<zulu>[Zz]|UTC|GMT)|(?P<sign>[+-])(?P<zh>\d{2})(?::?(?P<zm>\d{2}))?)"
 _HALF = r"(?P<p>[AaPp]\.?[Mm]\.?)"
@@ -79,7 +90,9 @@ def from_format(time_format: str) -> re.Pattern[bytes]:
         example = 'time_format = "%d.%m.%Y %H:%M:%S"'
         expected = "each once: " + " ".join(f"%{letter}" for letter in _DIRECTIVES if letter != "%")
         do = f"write it like {example}"
-        raise LogError(Problem(what=fault, where="[log] time_format", found=f'"{time_format}"', expected=expected, do=do))
+        raise LogError(
+            Problem(what=fault, where="[log] time_format", found=f'"{time_format}"', expected=expected, do=do)
+        )
     pieces = [re.escape(part) if k % 2 == 0 else _DIRECTIVES[part] for k, part in enumerate(parts)]
     return re.compile(rf"\s*{''.join(pieces)}\s*".encode())
 
@@ -91,7 +104,9 @@ def _fault(directives: list[str]) -> str:
     letters = "".join("b" if letter == "B" else letter for letter in directives if letter != "%")
     if len(set(letters)) < len(letters):
         return "time_format has a directive twice."
-    missing = [name for name, any_of in (("year", "Yy"), ("month", "mb"), ("day", "d")) if not set(any_of) & set(letters)]
+    missing = [
+        name for name, any_of in (("year", "Yy"), ("month", "mb"), ("day", "d")) if not set(any_of) & set(letters)
+    ]
     if missing:
         return f"time_format lacks the {' and the '.join(missing)}."
     return "time_format has %I without %p, or %p without %I." if ("I" in letters) != ("p" in letters) else ""

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
-from typing import Any
 
 import numpy as np
 import numpy.typing as npt
+import pandas as pd
 
 from auditor.arrays import BoolArray, FloatArray
 from auditor.logs.findings.evidence import ABSENT, CONFLICT, EMPTY, OUTSIDE, SENTINEL, USABLE, Trace
@@ -40,7 +40,7 @@ def read_column(log: Log, order: Order, signal: Signal, role: str) -> Column:
     """Return the usable engineering values of a signal per stamp, and what was not used."""
     raw = order.arrange(log.channels[str(signal.column)])
     bad = ~np.isfinite(raw)
-    sentinel = sentinel_mask(raw, role)
+    sentinel = sentinel_mask(raw, role == "measurement" and signal.low is None and signal.high is None)
     values = np.where(bad | sentinel, np.nan, raw) if bad.any() or sentinel.any() else raw
     if signal.scale != 1.0 or signal.offset != 0.0:
         values = signal.scale * values + signal.offset
@@ -86,8 +86,7 @@ def _text_states(log: Log, order: Order, signal: Signal) -> BoolArray:
     cells = log.texts.get(str(signal.column))
     if cells is None:
         return np.zeros(len(order.stamps), dtype=np.bool_)
-    there: npt.NDArray[Any] = order.arrange(np.not_equal(cells, None).astype(np.bool_))
-    return order.any_of(there)
+    return order.any_of(order.arrange(pd.notna(cells)))
 
 
 def constant_trace(signal: Signal, role: str, grid: Grid) -> Trace:

@@ -70,7 +70,7 @@ def _replay_row(replay: Replay, count: FlagCount, names: Sequence[str], loop: Lo
 
 
 def _setting_cells(setting: Setting, loop: Loop) -> dict[str, Any]:
-    return {"rule": setting.rule, "link": setting.link, "settings": settings_text(setting, loop)}
+    return {"rule": setting.rule, "link": setting.link, "settings": settings_text(setting, loop, full=True)}
 
 
 def _ends(name: str, interval: Sequence[float | None]) -> dict[str, float | None]:

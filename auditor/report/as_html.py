@@ -9,7 +9,6 @@ from typing import Any
 
 from jinja2 import Environment, PackageLoader, StrictUndefined
 from markupsafe import Markup
-from matplotlib.figure import Figure
 
 from auditor.audit import Audit
 from auditor.report import model_tables, tables
@@ -17,7 +16,7 @@ from auditor.report.as_json import usable_fraction
 from auditor.report.content import Content, gather
 from auditor.report.figures import draw_all, style
 from auditor.report.figures.window import telling_window
-from auditor.report.phrases import DECISIONS, clean, measured, rule_title, settings_text
+from auditor.report.phrases import DECISIONS, clean, measured, rule_title, settings_text, whole
 from auditor.report.tables import seconds, with_unit
 from auditor.report.times import LocalClock, local_clock
 from auditor.rules import RULES
@@ -42,14 +41,14 @@ ALTERNATIVES = {
 def report_html(audit: Audit) -> str:
     """Write the whole report as one HTML page."""
     content = gather(audit)
-    return render(content, draw_all(content))
+    return render(content, {name: style.svg(figure) for name, figure in draw_all(content).items()})
 
 
-def render(content: Content, figures: Mapping[str, Figure]) -> str:
-    """Write the page of `content` with pictures already drawn."""
+def render(content: Content, drawn: Mapping[str, str]) -> str:
+    """Write the page of `content` with its pictures, already drawn as SVG."""
     room = _environment()
     clock = local_clock(content.audit.record.zone, content.audit.record.period)
-    inline = {name: inline_svg(name, style.svg(figure)) for name, figure in figures.items()}
+    inline = {name: inline_svg(name, text) for name, text in drawn.items()}
     page: str = room.get_template("report.html.jinja").render(
         style=_style_sheet(room), figures=inline, window=telling_window(content), **_facts(content, clock)
     )
@@ -82,6 +81,7 @@ def _environment() -> Environment:
         "clean": clean,
         "unit": with_unit,
         "measured": measured,
+        "whole": whole,
     }
     return room
 
@@ -116,7 +116,7 @@ def _choice(content: Content) -> dict[str, str] | None:
     if content.replay is None:
         return None
     setting = content.replay.setting
-    return {"rule": rule_title(setting), "settings": settings_text(setting, content.audit.loop)}
+    return {"rule": rule_title(setting), "settings": settings_text(setting, content.audit.loop, full=True)}
 
 
 def _rules(content: Content) -> list[Any]:

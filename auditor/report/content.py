@@ -11,10 +11,10 @@ import numpy as np
 from auditor.audit import Audit
 from auditor.dangers.interval import Flag
 from auditor.replay import Measures, Replay
+from auditor.verdict import RMS_MARGIN
 
-SHOWN_REPLAYS = 12
+SHOWN_DANGERS = 12
 SHOWN_FLAGS = 60
-DEFAULT_RMS_FACTOR = 1.25
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -112,10 +112,10 @@ def gather(audit: Audit) -> Content:
 
 
 def accepted_rms_error(audit: Audit) -> float | None:
-    """Largest RMS error the decision accepts: as stated, else 1.25 times the record's own."""
+    """Largest RMS error the decision accepts: as stated, else `RMS_MARGIN` times the record's own."""
     if audit.loop.accept.max_rms_error is not None:
         return audit.loop.accept.max_rms_error
-    return None if audit.baseline is None else DEFAULT_RMS_FACTOR * audit.baseline.rms_error
+    return None if audit.baseline is None else RMS_MARGIN * audit.baseline.rms_error
 
 
 def focus_of(audit: Audit) -> int | None:
@@ -124,11 +124,6 @@ def focus_of(audit: Audit) -> int | None:
         return audit.recommendation.replay
     candidates = _answered(audit, lambda replay: replay.setting.rule != "periodic")
     return _best(audit, candidates)
-
-
-def shown_replays(audit: Audit) -> tuple[int, ...]:
-    """Replays whose flags and series a report shows, the one it is about first."""
-    return _shown(audit, focus_of(audit), flag_counts(audit))[0]
 
 
 def flag_counts(audit: Audit) -> tuple[FlagCount, ...]:
@@ -183,13 +178,11 @@ def _best(audit: Audit, candidates: Iterable[int]) -> int | None:
 
 
 def _shown(audit: Audit, focus: int | None, counts: Sequence[FlagCount]) -> tuple[tuple[int, ...], int]:
-    """Replays to show: the one the pages are about, then those only their danger flags keep from being chosen."""
-    limit = accepted_rms_error(audit) or np.inf
-    dangerous = [i for i in range(len(audit.replays)) if counts[i].danger and i != focus]
-    dangerous.sort(key=lambda i: (upper_rms_error(audit.replays[i]) > limit, -audit.replays[i].measures.saved_fraction))
+    """The replay the pages are about, then answered ones with danger flags: those with signals, fewest updates."""
+    dangerous = [i for i in _answered(audit, lambda replay: True) if counts[i].danger and i != focus]
+    dangerous.sort(key=lambda i: (audit.replays[i].series is None, audit.replays[i].measures.updates, i))
     first = () if focus is None else (focus,)
-    shown = (*first, *dangerous)[:SHOWN_REPLAYS]
-    return shown, len(first) + len(dangerous) - len(shown)
+    return (*first, *dangerous[:SHOWN_DANGERS]), max(0, len(dangerous) - SHOWN_DANGERS)
 
 
 def _options(audit: Audit, focus: int | None, counts: Sequence[FlagCount]) -> tuple[Option, ...]:

@@ -8,7 +8,7 @@ from auditor.controllers.pid import Pid
 from auditor.identify.plant import Model
 from auditor.report.content import Content
 from auditor.report.parameters import lag_intervals, parameter_interval
-from auditor.report.phrases import clean, measured
+from auditor.report.phrases import clean, measured, whole
 from auditor.report.tables import Row, Table, plain_table, seconds, with_unit
 from auditor.text import duration, number, percent
 
@@ -31,7 +31,7 @@ def conditions_table(content: Content) -> Table:
         ("safety function", "yes: never recommended for switching" if limits.safety else "no", "as the loop file says"),
         ("largest RMS error accepted", with_unit(number(content.max_rms_error), unit), rms),
         ("smallest saving wanted", percent(accept.min_saved_fraction), "loop file, or its default of 30 %"),
-        ("fewest hours wanted", with_unit(number(accept.min_hours), "h"), "loop file, or its default of 48 h"),
+        ("fewest hours wanted", with_unit(f"{accept.min_hours:g}", "h"), "loop file, or its default of 48 h"),
     ]
     return plain_table(("condition", "value", "where it comes from"), rows, numeric=(1,))
 
@@ -63,7 +63,7 @@ def controller_table(content: Content) -> Table:
 def _limits(pid: Pid, unit: str) -> str:
     if math.isinf(pid.low) and math.isinf(pid.high):
         return "none"
-    text = with_unit(f"{number(pid.low)} … {number(pid.high)}", unit)
+    text = with_unit(f"{pid.low:g} … {pid.high:g}", unit)
     return text if math.isinf(pid.max_rate) else f"{text}, at most {with_unit(number(pid.max_rate), unit)} per second"
 
 
@@ -101,7 +101,7 @@ def plant_table(content: Content) -> Table:
         rows.append(("inverse response" if plant.zero_s < 0 else "zero", seconds(abs(plant.zero_s)), ""))
     rows.append(("closed-loop time constant", seconds(model.tau_cl_s), ""))
     rows.append(("peak sensitivity Ms of the recorded loop", number(model.peak_sensitivity), ""))
-    return plain_table(("plant", "likeliest", "5–95 % of the likely plants"), rows, numeric=(1, 2))
+    return plain_table(("plant", "likeliest", "5–95 % of the likely plants"), rows, numeric=(2,))
 
 
 def _with_spread(value: float, interval: tuple[float, float] | None, unit: str) -> Row:
@@ -133,5 +133,5 @@ def evidence_table(content: Content) -> Table:
 def input_table(content: Content) -> Table:
     """The files the record came from."""
     inputs = content.audit.record.inputs
-    rows = [(clean(one.path), number(float(one.bytes), 12), one.sha256) for one in inputs]
+    rows = [(clean(one.path), whole(one.bytes), one.sha256) for one in inputs]
     return plain_table(("file", "bytes", "SHA-256"), rows, numeric=(1,))

@@ -51,9 +51,14 @@ def rule_title(setting: Setting) -> str:
     return ", ".join(parts)
 
 
-def settings_text(setting: Setting, loop: Loop) -> str:
-    """Write the values of a setting with their units, such as ``delta 0.01 m, longest silence 15 min``."""
+def settings_text(setting: Setting, loop: Loop, *, full: bool = False) -> str:
+    """Write the values of a setting with their units, such as ``delta 0.01 m, longest silence 15 min``.
+
+    A longest silence that is the one of the limits is written only when `full`.
+    """
     listed = {k: v for k, v in setting.settings.items() if k not in ("signal", "between")}
+    if not full and listed.get("max_silence_s") == loop.limits.max_silence:
+        listed.pop("max_silence_s", None)
     parts = [_one_setting(setting, name, float(value), loop) for name, value in listed.items()]
     return ", ".join(parts) or "no settings"
 
@@ -69,14 +74,20 @@ def _one_setting(setting: Setting, name: str, value: float, loop: Loop) -> str:
 
 
 def setting_unit(setting: Setting, name: str, loop: Loop) -> str:
-    """Return the unit of one setting; the unit of the watched signal stands for "measurement"."""
+    """Return the unit of one setting; signals stand in a rule's units by their role."""
     if name.endswith("_s"):
         return "s"
     specs = RULES[setting.rule].settings if setting.rule in RULES else ()
     stated = next((spec.unit for spec in specs if spec.name == name), "")
     signals = loop.signals
     watched = signals.actuator.unit if setting.link == "actuator" else signals.measurement.unit
+    stated = stated.replace("command", clean(signals.actuator.unit) or "units")
     return stated.replace("measurement", clean(watched) or "units")
+
+
+def whole(value: float) -> str:
+    """Write a count with thin spaces between thousands."""
+    return f"{value:,.0f}".replace(",", "\u202f")
 
 
 def measured(value: float | None, interval: tuple[float, float] | None) -> str:

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from auditor.replay import Measures
 from auditor.report.content import Content, FlagCount, Option, curve_key
-from auditor.report.phrases import CAUSES, clean, measured, rule_title, settings_text
+from auditor.report.phrases import CAUSES, clean, measured, rule_title, settings_text, whole
 from auditor.report.times import LocalClock
 from auditor.text import duration, number, percent
 
@@ -109,7 +109,7 @@ def _against(option: Option) -> str:
 
 def _difference(option: Option) -> str:
     ends = option.replay.rms_difference90 if option.replay else None
-    return "–" if ends is None else f"{number(ends[0])} … {number(ends[1])}"
+    return "–" if ends is None else f"{number(ends[0])} … {number(ends[1])}".replace("-", "\u2212")
 
 
 def _rows(content: Content, lines: Sequence[tuple[str, _Cell]]) -> tuple[Row, ...]:
@@ -212,7 +212,7 @@ def finding_table(content: Content, clock: LocalClock) -> Table:
         return "whole log" if ns is None else clock.moment(ns)
 
     rows = [
-        (clean(f.kind), clean(f.signal) or "clock", moment(f.start), number(f.count, 6), clean(f.detail), clean(f.effect), f.weight)
+        (clean(f.kind), clean(f.signal) or "clock", moment(f.start), whole(f.count), clean(f.detail), clean(f.effect), f.weight)
         for f in content.audit.record.findings
     ]
     head = ("finding", "signal", f"from ({clock.name})", "count", "what was seen", "what was done about it", "weight")

@@ -21,7 +21,7 @@ from auditor.report.series import series_parquet
 
 ModelText = Callable[[Model], str]
 
-_OWN = re.compile(rf"series/\d+\.parquet|figures/({'|'.join(FIGURES)})\.(png|svg)|model\.json")
+_OWN = re.compile(rf"series/\d+\.parquet|figures/({'|'.join(FIGURES)})\.(png|svg)")
 
 
 def write_audit(
@@ -72,7 +72,8 @@ def _files(audit: Audit, model_text: ModelText | None, progress: Progress) -> It
     content = gather(audit)
     progress("writing", 0.0)
     figures = draw_all(content)
-    yield "report.html", _encoded(render(content, figures))
+    drawn = {name: style.svg(figure) for name, figure in figures.items()}
+    yield "report.html", _encoded(render(content, drawn))
     yield "audit.json", _encoded(audit_json(audit))
     if audit.model is not None and model_text is not None:
         yield "model.json", _encoded(model_text(audit.model))
@@ -80,7 +81,7 @@ def _files(audit: Audit, model_text: ModelText | None, progress: Progress) -> It
     yield "flags.csv", _encoded(flags_csv(audit))
     progress("writing", 0.4)
     for name, figure in figures.items():
-        yield f"figures/{name}.svg", _encoded(style.svg(figure))
+        yield f"figures/{name}.svg", _encoded(drawn[name])
         yield f"figures/{name}.png", style.png(figure)
     progress("writing", 0.8)
     yield from _series(content)
@@ -125,7 +126,7 @@ def _undo(temporaries: Iterable[Path], made: Iterable[Path]) -> None:
 
 def _remove_stale(out: Path, written: set[Path]) -> None:
     """Remove files of an earlier audit that would now contradict this one."""
-    for path in (*out.glob("series/*"), *out.glob("figures/*"), out / "model.json"):
+    for path in (*out.glob("series/*"), *out.glob("figures/*")):
         if path not in written and _OWN.fullmatch(path.relative_to(out).as_posix()):
             path.unlink(missing_ok=True)
 

@@ -39,7 +39,7 @@ def _stretches(seen: Evidence, twice: int) -> str:
     if twice == 0:
         return ""
     stretches = len(runs_of(seen.overlapped)[0])
-    return f"; the clock ran over {plural(stretches, 'stretch') if stretches == 1 else f'{stretches} stretches'} twice"
+    return f"; the clock ran over {plural(stretches, 'stretch')} twice"
 
 
 def _not_used(twice: int) -> str:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from auditor.logs.findings.base import Finding
-from auditor.logs.findings.evidence import CONFLICT, EMPTY, Evidence
+from auditor.logs.findings.evidence import EMPTY, Evidence
 from auditor.logs.findings.wording import spells_of
 from auditor.text import percent
 
@@ -26,8 +26,7 @@ def find(seen: Evidence) -> list[Finding]:
                 start=spells.start,
                 end=spells.end,
                 count=spells.samples,
-                detail=f"rows without a number: {spells.told('stretch' if spells.count == 1 else 'stretche')}, "
-                f"{percent(share, 2)} of the samples",
+                detail=f"rows without a number: {spells.told('stretch')}, {percent(share, 2)} of the samples",
                 effect="held where short, else the record is cut there",
                 signal=trace.name,
                 weight="limits the answer" if share > _MUCH else "note",

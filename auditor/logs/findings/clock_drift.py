@@ -33,6 +33,7 @@ def find(seen: Evidence) -> list[Finding]:
             count=len(seen.beats),
             detail=f"the stamps drift by {duration(abs(total) * seen.unit)} against the period of "
             f"{duration(seen.period)}, {1e6 * rate:.3g} parts per million",
-            effect=f"snapped to the grid; {plural(seen.crowded, 'row')} left out as a later one fell into the same period",
+            effect=f"snapped to the grid; {plural(seen.crowded, 'row')} left out as a later one fell into the same "
+            "period",
         )
     ]

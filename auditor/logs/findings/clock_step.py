@@ -8,6 +8,7 @@ from auditor.arrays import FloatArray, IntArray
 from auditor.logs.findings.base import Finding
 from auditor.logs.findings.evidence import Evidence
 from auditor.logs.findings.wording import moment, plural
+from auditor.logs.runs import thinned
 from auditor.text import duration
 
 _LEAST = 0.05
@@ -33,7 +34,8 @@ def clock_steps(unevenness: FloatArray) -> tuple[IntArray, FloatArray]:
         Change of phase [spacing].
     """
     none = np.empty(0, dtype=np.int64), np.empty(0)
-    spread = _MAD_PER_DEVIATION * float(np.median(np.abs(unevenness - np.median(unevenness))))
+    some = thinned(unevenness)
+    spread = _MAD_PER_DEVIATION * float(np.median(np.abs(some - np.median(some))))
     least = max(_LEAST, _ABOVE_JITTER * spread)
     at = np.flatnonzero(np.abs(unevenness) > least)
     if len(at) == 0 or len(at) > _MOST or len(unevenness) < 2 * _ROWS:

@@ -29,8 +29,8 @@ def find(seen: Evidence) -> list[Finding]:
             end=None,
             count=len(used),
             detail=f"{used[0]:g} {trace.unit}".rstrip() + f" at all {len(used)} valid samples",
-            effect="nothing can be answered: change the setpoint by a few times the noise, or give the actuator a bump, "
-            "in automatic, and log on",
+            effect="nothing can be answered: change the setpoint by a few times the noise, or give the actuator a "
+            "bump, in automatic, and log on",
             signal=trace.name,
             weight="stops the answer",
         )

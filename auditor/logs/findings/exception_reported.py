@@ -7,6 +7,7 @@ import numpy as np
 from auditor.arrays import BoolArray, FloatArray, IntArray
 from auditor.logs.findings.base import Finding
 from auditor.logs.findings.evidence import Evidence
+from auditor.logs.runs import thinned
 from auditor.text import number, percent
 
 _FEWEST = 20
@@ -33,12 +34,14 @@ def archive_deadband(values: FloatArray, step: float | None) -> float | None:
         Step of the lattice the values lie on [unit]; changes of one step are no dead-band.
     """
     finite = values[np.isfinite(values)]
-    changes = np.abs(np.diff(finite))
-    moved = np.flatnonzero(changes > 0)
-    if len(moved) < _FEWEST or len(changes) - len(moved) < max(_FEWEST, _HELD * len(changes)):
+    repeats = finite[1:] == finite[:-1]
+    if np.sum(repeats) < max(_FEWEST, _HELD * len(repeats)):
         return None
-    sizes = changes[moved][~_by_the_clock(moved)]
-    if len(sizes) < _FEWEST or len(np.unique(finite[moved])) < _FEWEST_LEVELS:
+    moved = np.flatnonzero(~repeats)
+    if len(moved) < _FEWEST or len(np.unique(thinned(finite[moved]))) < _FEWEST_LEVELS:
+        return None
+    sizes = np.abs(finite[moved + 1] - finite[moved])[~_by_the_clock(moved)]
+    if len(sizes) < _FEWEST:
         return None
     low = float(np.quantile(sizes, _STRAY_CHANGES))
     smaller, next_up = int(np.sum(sizes < 0.5 * low)), int(np.sum((sizes >= low) & (sizes < 2 * low)))

@@ -21,8 +21,7 @@ def find(seen: Evidence) -> list[Finding]:
             start=spells.start,
             end=spells.end,
             count=spells.samples,
-            detail=f"{spells.told('stretch' if spells.count == 1 else 'stretche')}, {percent(share, 2)} of the samples: "
-            f"{reasons}",
+            detail=f"{spells.told('stretch')}, {percent(share, 2)} of the samples: {reasons}",
             effect="not used, and the record is cut there",
         )
     ]

@@ -28,9 +28,8 @@ def on_lines(values: FloatArray, step: float | None) -> BoolArray:
     step : float or None
         Step of the lattice the values lie on [unit]: slopes of a few steps are equal by chance.
     """
-    line = np.zeros(len(values), dtype=np.bool_)
     if len(values) < 3 or not np.isfinite(values).any():
-        return line
+        return np.zeros(len(values), dtype=np.bool_)
     slope = np.diff(values)
     size = np.minimum(np.abs(slope[1:]), np.abs(slope[:-1]))
     noise = 4 * np.finfo(np.float64).eps * float(np.nanmax(np.abs(values)))
@@ -38,9 +37,11 @@ def on_lines(values: FloatArray, step: float | None) -> BoolArray:
     with np.errstate(invalid="ignore"):
         straight = (np.abs(np.diff(slope)) <= _SAME_SLOPE * size + noise) & (size > least)
     starts, stops = runs_of(straight)
-    for start, stop in zip(starts[stops - starts >= _FEWEST_POINTS], stops[stops - starts >= _FEWEST_POINTS], strict=True):
-        line[start + 1 : stop + 1] = True
-    return line
+    long = stops - starts >= _FEWEST_POINTS
+    edges = np.zeros(len(values) + 1, dtype=np.int64)
+    edges[starts[long] + 1] += 1
+    edges[stops[long] + 1] -= 1
+    return np.cumsum(edges[:-1]) > 0
 
 
 def find(seen: Evidence) -> list[Finding]:
@@ -58,8 +59,8 @@ def find(seen: Evidence) -> list[Finding]:
             start=None,
             end=None,
             count=count,
-            detail=f"{plural(count, 'value')}, {percent(count / max(1, len(trace.values)), 1)}, on straight lines between "
-            "others" + ("; the loop file says that the archive interpolates" if stated else ""),
+            detail=f"{plural(count, 'value')}, {percent(count / max(1, len(trace.values)), 1)}, on straight lines "
+            "between others" + ("; the loop file says that the archive interpolates" if stated else ""),
             effect="none, kept as recorded; interpolated points are no samples and make event rules look better than "
             "they are: ask the archive for the stored values",
             signal=trace.name,

@@ -19,8 +19,8 @@ def find(seen: Evidence) -> list[Finding]:
     """Report stamps more than a tenth of their spacing off it, when they are more than a few or cost a row."""
     off = np.abs(seen.unevenness) > _VISIBLE
     count = int(off.sum())
-    crowded = seen.crowded if seen.log_step >= seen.period else 0
-    if count <= max(_FEWEST, _SHARE * len(off)) and not (count and crowded):
+    crowded = seen.crowded if count and seen.log_step >= seen.period else 0
+    if count <= max(_FEWEST, _SHARE * len(off)) and not crowded:
         return []
     at = np.flatnonzero(off)
     share = count / len(off)

@@ -58,7 +58,7 @@ def _sparse(trace: Trace, seen: Evidence) -> Finding | None:
         end=None,
         count=int(np.sum(trace.state == USABLE)),
         detail=f"a number at only {percent(share)} of the samples that have rows",
-        effect='the others are holes; state stored = "on-change" if the archive stores this signal only when it changes',
+        effect='the others are holes; state stored = "on-change" if the archive stores this signal on change only',
         signal=trace.name,
         weight="limits the answer",
     )

@@ -58,8 +58,8 @@ def _beyond_limits(trace: Trace, seen: Evidence) -> Finding | None:
         start=int(at[0]),
         end=int(at[-1]),
         count=len(values),
-        detail=f"{plural(len(values), 'value')}, {percent(share, 2)}, outside the actuator's limits {_range(trace)}, from "
-        f"{values.min():g} to {values.max():g}",
+        detail=f"{plural(len(values), 'value')}, {percent(share, 2)}, outside the actuator's limits {_range(trace)}, "
+        f"from {values.min():g} to {values.max():g}",
         effect="kept as recorded; wrong limits make the replayed controller another one: check them",
         signal=trace.name,
         weight="limits the answer" if share > _MUCH else "note",

@@ -80,7 +80,8 @@ def _unstated(trace: Trace, seen: Evidence, end: str, sign: float) -> Finding | 
         end=None,
         count=piled,
         detail=f"{plural(piled, 'valid sample')}, {percent(piled / len(signed), 2)}, at exactly {sign * extreme:g} "
-        f"{trace.unit}".rstrip() + f", its {end}est value: that looks like a limit",
+        f"{trace.unit}".rstrip()
+        + f", its {end}est value: that looks like a limit",
         effect=f"none; state {end} for the actuator if it is one, as a missing limit makes the controller another one",
         signal=trace.name,
         weight="limits the answer",

@@ -24,30 +24,30 @@ _PARTS_OF_LEVEL = 1e-3
 _QUARTILES_PER_DEVIATION = 1.349
 
 
-def sentinel_mask(values: FloatArray, role: str) -> BoolArray:
+def sentinel_mask(values: FloatArray, any_number: bool) -> BoolArray:
     """Return True where a raw value stands for "no value".
 
     A number is taken for one when it is further than 20 robust deviations from the median and from every other
-    number of the signal, and either customary or, for a measurement, the same three times. An actuator, a setpoint
-    or a disturbance may rest far away for good reasons, so that only customary numbers count there.
+    number of the signal, and either customary or, where `any_number` is allowed, the same at least three times.
 
     Parameters
     ----------
     values : ndarray, shape (rows,)
         As recorded, NaN allowed.
-    role : str
-        "measurement", "setpoint", "actuator" or "disturbance".
+    any_number : bool
+        False for signals that may rest far away for good reasons (all but the measurement) and where the loop file
+        states a range, which says better what is no value.
     """
     mask = np.zeros(len(values), dtype=np.bool_)
     centre, quartiles = _scale(values)
     deviation = max(quartiles, _PARTS_OF_LEVEL * abs(centre))
-    with np.errstate(invalid="ignore"):
-        far = np.flatnonzero(np.abs(values - centre) > _FAR * deviation)
-    if len(far) == 0:
+    low, high = centre - _FAR * deviation, centre + _FAR * deviation
+    if not len(values) or (np.fmin.reduce(values) >= low and np.fmax.reduce(values) <= high):
         return mask
+    far = np.flatnonzero((values < low) | (values > high))
     levels, counts = np.unique(values[far], return_counts=True)
     apart = _apart(levels, centre, _FAR * deviation)
-    repeated = (counts >= _REPEATS) if role == "measurement" and quartiles > 0 else np.zeros(len(levels), np.bool_)
+    repeated = (counts >= _REPEATS) if any_number and quartiles > 0 else np.zeros(len(levels), np.bool_)
     chosen = levels[apart & (np.isin(levels, list(CUSTOMARY)) | repeated)]
     mask[far] = np.isin(values[far], chosen)
     return mask

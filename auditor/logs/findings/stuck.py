@@ -28,9 +28,10 @@ def stuck_runs(values: FloatArray) -> tuple[IntArray, IntArray]:
         Finite values in the order they were stored.
     """
     none = np.empty(0, dtype=np.int64)
-    if len(values) <= _FEWEST:
+    moved = values[1:] != values[:-1]
+    if len(moved) - np.sum(moved) < _FEWEST:
         return none, none
-    starts = np.concatenate(([0], np.flatnonzero(np.diff(values) != 0) + 1))
+    starts = np.concatenate(([0], np.flatnonzero(moved) + 1))
     lengths = np.diff(np.append(starts, len(values)))
     others = np.delete(lengths, np.argmax(lengths))
     usual = float(np.quantile(others, _LONGEST_USUAL)) if len(others) else 1.0
@@ -59,7 +60,7 @@ def find(seen: Evidence) -> list[Finding]:
             detail=f"the measurement stands still {plural(len(first), 'time')}, {percent(share, 1)} of the values, the "
             f"longest {duration(float(lasting[longest]))} at {values[first[longest]]:g} {trace.unit}".rstrip()
             + f" from {moment(int(stamps[first[longest]]))}",
-            effect="none, kept as recorded: what the controller saw; exclude it in the loop file if the sensor was dead",
+            effect="none, kept as recorded: it is what the controller saw; exclude it if the sensor was dead",
             signal=trace.name,
             weight="stops the answer" if share > 1 - _MUCH else "limits the answer" if share > _MUCH else "note",
         )

@@ -20,7 +20,8 @@ def moment(time: int) -> str:
 
 def plural(count: int, noun: str) -> str:
     """Write a count with its noun."""
-    return f"{count} {noun}" if count == 1 else f"{count} {noun}s"
+    ending = "" if count == 1 else "es" if noun.endswith("ch") else "s"
+    return f"{count} {noun}{ending}"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -23,8 +23,11 @@ FIGURES: dict[str, Callable[[Content], Figure | None]] = {
 def draw_all(content: Content) -> dict[str, Figure]:
     """Draw every picture there is something to show in."""
     with style.drawing():
-        drawn = {name: compose(content) for name, compose in FIGURES.items()}
-    return {name: figure for name, figure in drawn.items() if figure is not None}
+        composed = {name: compose(content) for name, compose in FIGURES.items()}
+        drawn = {name: figure for name, figure in composed.items() if figure is not None}
+        for figure in drawn.values():
+            style.settle(figure)
+    return drawn
 
 
 __all__ = ["FIGURES", "draw_all"]

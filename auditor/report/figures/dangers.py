@@ -14,7 +14,6 @@ from auditor.report.content import Content
 from auditor.report.figures import style
 from auditor.report.figures.time_axis import clock_axis, days
 from auditor.report.phrases import CAUSES, clean, rule_title, settings_text
-from auditor.report.times import local_clock
 
 _NARROWEST = 0.0025
 
@@ -63,11 +62,11 @@ def draw(axes: Axes, content: Content, rows: Sequence[Row]) -> Axes:
         for severity, color, height in (("watch", style.WATCH, 0.34), ("danger", style.DANGER, 0.62)):
             bars = [_bar(content, flag, last - first) for flag in row.flags if flag.severity == severity]
             axes.broken_barh(bars, (level - height / 2, height), facecolors=color, linewidth=0, zorder=2)
-    axes.set(xlim=(first, last), ylim=(len(rows) - 0.4, -0.6), yticks=range(len(rows)))
+    axes.set(ylim=(len(rows) - 0.4, -0.6), yticks=range(len(rows)))
     axes.set_yticklabels([row.name for row in rows])
     axes.tick_params(left=False)
     axes.spines["left"].set_visible(False)
-    return clock_axis(axes, local_clock(record.zone, record.period))
+    return clock_axis(axes, record)
 
 
 def _bar(content: Content, flag: Flag, reach: float) -> tuple[float, float]:

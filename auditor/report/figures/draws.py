@@ -71,7 +71,7 @@ def _naive(axes: Axes, naive: float, low: float, high: float) -> Axes:
     top = axes.get_ylim()[1]
     if low <= naive <= high:
         axes.axvline(naive, color=style.CURVES[1], linewidth=1.0, linestyle=(0, (3, 2)))
-        words, x, side = " without a model", naive, "left" if naive < (low + high) / 2 else "right"
+        words, x, side = "\u2002without a model\u2002", naive, "left" if naive < (low + high) / 2 else "right"
     elif naive < low:
         words, x, side = f"← without a model: {number(naive)}", low, "left"
     else:

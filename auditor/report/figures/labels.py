@@ -10,7 +10,7 @@ from matplotlib.axes import Axes
 
 from auditor.arrays import FloatArray
 
-_LETTER, _LINE = 0.58, 1.25
+_LETTER, _LINE, _AWAY = 0.58, 1.25, 8.0
 # Offsets to try, in letters and lines from the anchor: near before far, left before right.
 _SIDES = [(side, up) for up in (0.0, 1.0, -1.0, 1.9, -1.9, 2.8, -2.8, 3.7, -3.7) for side in (-1, 1)]
 
@@ -53,7 +53,7 @@ def place_labels(axes: Axes, labels: Sequence[Label], points: FloatArray, size: 
 def _box(anchor: FloatArray, text: str, size: float, side: int, up: float) -> FloatArray:
     """Corners ((x0, y0), (x1, y1)) of a text beside `anchor` [pt]."""
     width, height = _LETTER * size * len(text), _LINE * size
-    left = anchor[0] + 6.0 if side > 0 else anchor[0] - 6.0 - width
+    left = anchor[0] + _AWAY if side > 0 else anchor[0] - _AWAY - width
     bottom = anchor[1] + up * height - height / 2
     return np.array(((left, bottom), (left + width, bottom + height)))
 
@@ -62,12 +62,12 @@ def _cost(box: FloatArray, taken: Sequence[FloatArray], busy: FloatArray, frame:
     clashes = sum(bool((box[0] < other[1]).all() and (other[0] < box[1]).all()) for other in taken)
     covered = int(((busy > box[0]) & (busy < box[1])).all(axis=1).sum())
     outside = float(np.maximum(frame[0] - box[0], 0).sum() + np.maximum(box[1] - frame[1], 0).sum())
-    return 40.0 * clashes + 3.0 * covered + 5.0 * outside
+    return 60.0 * clashes + 5.0 * covered + 5.0 * outside
 
 
 def _write(axes: Axes, label: Label, anchor: FloatArray, box: FloatArray, place: tuple[int, float], size: float) -> None:
     side, up = place
-    offset = (6.0 if side > 0 else -6.0, float(box[:, 1].mean() - anchor[1]))
+    offset = (_AWAY if side > 0 else -_AWAY, float(box[:, 1].mean() - anchor[1]))
     leader = {"arrowstyle": "-", "color": label.color, "linewidth": 0.5, "shrinkA": 0, "shrinkB": 2}
     axes.annotate(
         label.text,

@@ -13,7 +13,6 @@ from auditor.report.content import Content
 from auditor.report.figures import style
 from auditor.report.figures.time_axis import clock_axis, days, draw_envelope
 from auditor.report.phrases import clean
-from auditor.report.times import local_clock
 
 _BARS = 180
 
@@ -29,8 +28,7 @@ def compose(content: Content) -> Figure | None:
     draw_measurement(rows[0], content, series)
     if series:
         draw_rate(rows[1], content, series)
-    clock_axis(rows[-1], local_clock(record.zone, record.period))
-    rows[0].set_xlim(days(record, 0), days(record, len(record) - 1))
+    clock_axis(rows[-1], record)
     return figure
 
 
@@ -41,8 +39,7 @@ def draw_measurement(axes: Axes, content: Content, series: Series | None) -> Axe
     draw_envelope(axes, record, record.y, color=style.RECORD, zorder=2, alpha=0.9)
     if series is not None:
         draw_envelope(axes, record, series.y, color=style.REPLAY, zorder=3, alpha=0.55)
-    setpoint = record.r.copy()
-    axes.plot(*_thinned(record, setpoint), color=style.INK, linewidth=0.8, zorder=4)
+    axes.plot(*_thinned(record, record.r), color=style.INK, linewidth=0.8, zorder=4)
     axes.set_ylabel(style.with_unit("measurement", clean(content.audit.loop.signals.measurement.unit)))
     words = [("recorded", style.RECORD), ("setpoint", style.INK)]
     if series is not None:
@@ -103,7 +100,7 @@ def heading(axes: Axes, words: list[tuple[str, str]]) -> Axes:
             weight="bold",
         )
         mark.set_in_layout(text == words[0][0])
-        x += 6.0 * len(text) + 10.0
+        x += 5.4 * len(text) + 9.0
     return axes
 
 

@@ -13,7 +13,6 @@ from auditor.report.content import Content
 from auditor.report.figures import style
 from auditor.report.figures.record import heading
 from auditor.report.figures.time_axis import clock_axis, days
-from auditor.report.times import local_clock
 
 
 def compose(content: Content) -> Figure | None:
@@ -33,9 +32,9 @@ def draw(axes: Axes, content: Content) -> Axes:
         axes.broken_barh(_bars(record, spans), (0.0, 1.0), facecolors=color, linewidth=0)
     found = [finding.start / 86_400e9 for finding in record.findings if finding.start is not None]
     axes.vlines(found, -0.55, -0.15, color=style.DANGER, linewidth=0.8)
-    axes.set(yticks=[], ylim=(-0.6, 1.0), xlim=(days(record, 0), days(record, len(record) - 1)))
+    axes.set(yticks=[], ylim=(-0.6, 1.0))
     axes.spines["left"].set_visible(False)
-    clock_axis(axes, local_clock(record.zone, record.period))
+    clock_axis(axes, record)
     words = [("counted", style.REPLAY), ("warm-up or too short", style.CURVES[2]), ("not used", style.RECORD)]
     return heading(axes, [*words, ("findings", style.DANGER)])
 

@@ -10,7 +10,6 @@ from types import MappingProxyType
 from typing import Any
 
 import matplotlib as mpl
-from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 PANEL = "#fcfbf7"
@@ -77,6 +76,13 @@ def new_figure(height: float) -> Figure:
     return Figure(figsize=(WIDTH, height), layout="constrained")
 
 
+def settle(figure: Figure) -> Figure:
+    """Lay a picture out once, so that every format of it is the same picture."""
+    figure.draw_without_rendering()
+    figure.set_layout_engine("none")
+    return figure
+
+
 def svg(figure: Figure) -> str:
     """Return a picture as SVG text without a date, so that the same picture is the same text."""
     sink = io.BytesIO()
@@ -91,12 +97,6 @@ def png(figure: Figure) -> bytes:
     with drawing():
         figure.savefig(sink, format="png", dpi=200, metadata={"Software": None})
     return sink.getvalue()
-
-
-def quiet_ticks(axes: Axes) -> Axes:
-    """Take the tick marks away where a label alone says enough."""
-    axes.tick_params(length=2.5, pad=2)
-    return axes
 
 
 def with_unit(name: str, unit: str) -> str:

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.ticker import FuncFormatter, NullFormatter
+from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 
 from auditor.arrays import FloatArray, read_only
 from auditor.replay import Replay
@@ -16,7 +16,6 @@ from auditor.report.content import Content, curve_key
 from auditor.report.figures import style
 from auditor.report.figures.labels import Label, place_labels
 from auditor.report.phrases import clean, rule_title
-from auditor.text import number
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -92,9 +91,20 @@ def draw(axes: Axes, content: Content, curves: Sequence[Curve]) -> Axes:
         _draw_curve(axes, curve, color, marker)
         labels.append(_name(axes, curve, color))
     labels += _marks(axes, content)
-    points = np.concatenate([np.column_stack((c.rates, c.errors)) for c in curves])
-    axes.figure.draw_without_rendering()
-    return place_labels(axes, [label for label in labels if label is not None], points)
+    style.settle(axes.figure)
+    return place_labels(axes, [label for label in labels if label is not None], _drawn_points(curves))
+
+
+def _drawn_points(curves: Sequence[Curve]) -> FloatArray:
+    """Marks, whisker ends and points along the lines, shape (n, 2), for labels to keep clear of."""
+    parts = [np.column_stack((c.rates, c.errors)) for c in curves]
+    for curve in curves:
+        x, y = np.log(curve.rates[curve.edge]), curve.errors[curve.edge]
+        along = np.linspace(0, len(x) - 1, 12 * len(x))
+        parts.append(np.column_stack((np.exp(np.interp(along, np.arange(len(x)), x)), np.interp(along, np.arange(len(y)), y))))
+        if not curve.clock:
+            parts += [np.column_stack((curve.rates, end)) for end in curve.error_ends.T]
+    return np.concatenate(parts)
 
 
 def _frame(axes: Axes, content: Content, curves: Sequence[Curve]) -> None:
@@ -103,8 +113,9 @@ def _frame(axes: Axes, content: Content, curves: Sequence[Curve]) -> None:
     errors = np.concatenate([c.errors for c in curves])
     rates = np.concatenate([c.rates for c in curves] + [[audit.baseline.updates_per_hour]])
     top, bottom = _reach(content, errors)
-    axes.set(ylim=(bottom, top), xscale="log", xlim=(rates.min() / 1.9, rates.max() * 1.7))
-    axes.xaxis.set_major_formatter(FuncFormatter(lambda value, _: number(value, 1 if value < 1 else 3).removesuffix(".0")))
+    axes.set(ylim=(bottom, top), xscale="log", xlim=(rates.min() / 2.5, rates.max() * 1.7))
+    axes.xaxis.set_major_locator(LogLocator(subs=(1.0, 2.0, 5.0)))
+    axes.xaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
     axes.xaxis.set_minor_formatter(NullFormatter())
     axes.set_xlabel("updates per hour (each step to the left is fewer messages)")
     axes.set_ylabel(style.with_unit("RMS error", unit))
@@ -112,7 +123,7 @@ def _frame(axes: Axes, content: Content, curves: Sequence[Curve]) -> None:
     axes.set_axisbelow(True)
     above = int((errors > top).sum())
     if above:
-        words = f"{above} setting{'s' if above > 1 else ''} with a larger error lie above this picture"
+        words = f"above this picture: {above} setting{'s' if above > 1 else ''} with a larger error"
         axes.text(0.995, 0.985, words, transform=axes.transAxes, ha="right", va="top", fontsize=7.5, color=style.SOFT)
 
 
@@ -120,7 +131,7 @@ def _reach(content: Content, errors: FloatArray) -> tuple[float, float]:
     """Errors worth a picture: up to half more than what is accepted, or the recommended one."""
     base = content.audit.baseline.rms_error if content.audit.baseline else 0.0
     focus = content.replay.measures.rms_error if content.replay else base
-    top = min(float(errors.max()) * 1.06, max(2.2 * base, 1.6 * (content.max_rms_error or base), 1.4 * focus))
+    top = min(float(errors.max()) * 1.06, max(1.8 * base, 1.35 * (content.max_rms_error or base), 1.4 * focus))
     bottom = min(base, float(errors.min()))
     top = top if top > bottom else bottom + (abs(bottom) or 1.0)
     return top, max(0.0, bottom - 0.12 * (top - bottom))

@@ -17,7 +17,6 @@ from auditor.report.figures import style
 from auditor.report.figures.record import draw_bounds, heading
 from auditor.report.figures.time_axis import clock_axis, days
 from auditor.report.phrases import clean
-from auditor.report.times import local_clock
 
 _FEWEST, _MOST = 120, 900
 
@@ -69,9 +68,7 @@ def compose(content: Content) -> Figure | None:
     draw_measurement(rows[0], content, replay.series, window)
     draw_updates(rows[1], content, replay.series, window)
     draw_actuator(rows[2], content, replay.series, window)
-    record = content.audit.record
-    clock_axis(rows[2], local_clock(record.zone, record.period))
-    rows[2].set_xlim(days(record, window.start), days(record, window.stop - 1))
+    clock_axis(rows[2], content.audit.record, window.start, window.stop)
     return figure
 
 

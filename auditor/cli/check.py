@@ -1,0 +1,31 @@
+"""`auditor check`: what was found in a log; nothing is replayed."""
+
+from __future__ import annotations
+
+import sys
+
+import typer
+
+from auditor.cli.options import Json, LoopFile
+
+
+def register(app: typer.Typer) -> None:
+    """Add the command."""
+
+    @app.command("check", help="Read the log and print what was found in it; nothing is replayed.")
+    def command(loopfile: LoopFile, json: Json = False) -> None:
+        from auditor.cli.screen import progress_on_stderr
+        from auditor.cli.summary import asked_of_log, findings_table, record_lines
+        from auditor.logs.align import read_record
+        from auditor.loopfile import read_loop
+        from auditor.report.as_json import log_json
+
+        loop = read_loop(loopfile)
+        with progress_on_stderr(quiet=json) as progress:
+            progress("reading the log", 0.0)
+            record = read_record(loop)
+            progress("reading the log", 1.0)
+        if json:
+            sys.stdout.write(log_json(record, loop))
+            return
+        print(record_lines(record, loop), findings_table(record), asked_of_log(record, loop), sep="\n\n")

@@ -1,0 +1,51 @@
+"""`auditor identify`: controller, likely plants, and how far they may be trusted."""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from auditor.cli.options import JOBS, Jobs, Json, LoopFile, Quick, Seed
+
+
+def register(app: typer.Typer) -> None:
+    """Add the command."""
+
+    @app.command("identify", help="Fit controller and plant, print and plot the validation.")
+    def command(
+        loopfile: LoopFile,
+        save: Annotated[Path | None, typer.Option("--save", metavar="FILE", help="Save the model for `replay` and `audit`.")] = None,
+        plot: Annotated[Path | None, typer.Option("--plot", metavar="FILE", help="Step response of the likely plants, PNG or SVG.")] = None,
+        jobs: Jobs = JOBS,
+        seed: Seed = 1,
+        quick: Quick = False,
+        json: Json = False,
+    ) -> int:
+        from auditor.cli.screen import progress_on_stderr
+        from auditor.cli.summary import model_lines
+        from auditor.files import write_text
+        from auditor.identify.identify import identify
+        from auditor.identify.model_file import model_text
+        from auditor.logs.align import read_record
+        from auditor.loopfile import read_loop
+
+        loop = read_loop(loopfile)
+        with progress_on_stderr(quiet=json) as progress:
+            progress("reading the log", 0.0)
+            record = read_record(loop)
+            model = identify(record, loop, seed=seed, quick=quick, workers=jobs, progress=progress)
+        if save is not None:
+            write_text(save, model_text(model))
+        if plot is not None:
+            _plot(model, loop, plot)
+        sys.stdout.write(model_text(model) if json else model_lines(model, loop) + "\n")
+        return 4 if model.trust == "none" else 0
+
+
+def _plot(model, loop, path: Path) -> None:  # type: ignore[no-untyped-def]
+    from auditor.report.figures import save_model_figure
+
+    save_model_figure(model, loop, path)
