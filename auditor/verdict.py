@@ -26,6 +26,10 @@ CAUTIONS = (
 RMS_MARGIN = 1.25
 """Largest RMS error accepted when the owner states none, as a multiple of the record's."""
 
+RESERVE = 0.9
+"""A setting is chosen with the upper end of its error interval within this share of what is accepted: the rest of the
+record, and the year after, will not be kinder than the part it was chosen on."""
+
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
 class Recommendation:
@@ -171,27 +175,37 @@ def recommend(case: Case) -> Recommendation:
         return Recommendation(replay=None, reasons=("The loop is marked as a safety function.",))
     seen = {i: examine(case, i, "first") for i in candidates(case)}
     clean = [i for i, found in seen.items() if not found.fails and not found.straddles]
+    roomy = [i for i in clean if case.replays[i].interval90_first["rms_error"][1] <= RESERVE * case.max_rms]
     open_ones = [i for i, found in seen.items() if not found.fails]
-    pool = clean or open_ones
+    pool = roomy or clean or open_ones
     if not pool:
         return Recommendation(replay=None, reasons=_why_none(case, seen))
-    chosen = min(pool, key=lambda i: (case.replays[i].first.updates, case.replays[i].first.rms_error, i))
-    return Recommendation(replay=chosen, reasons=_why_chosen(case, chosen, seen[chosen]))
+    if roomy:
+        chosen = min(roomy, key=lambda i: (case.replays[i].first.updates, case.replays[i].first.rms_error, i))
+    else:
+        # Without reserve anywhere, the setting with the smallest error is the one most likely to hold.
+        chosen = min(pool, key=lambda i: (case.replays[i].first.rms_error, case.replays[i].first.updates, i))
+    return Recommendation(replay=chosen, reasons=_why_chosen(case, chosen, seen[chosen], reserve=bool(roomy)))
 
 
-def _why_chosen(case: Case, chosen: int, found: Findings) -> tuple[str, ...]:
+def _why_chosen(case: Case, chosen: int, found: Findings, *, reserve: bool) -> tuple[str, ...]:
     replay = case.replays[chosen]
     unit = case.loop.signals.measurement.unit
-    facts = (
-        f"On the first part of the record it has the fewest updates of all settings that keep what is asked for: "
-        f"{percent(replay.first.saved_fraction)} saved, RMS error {number(replay.first.rms_error)} {unit}."
-    )
+    facts = f"{percent(replay.first.saved_fraction)} saved, RMS error {number(replay.first.rms_error)} {unit}"
     if found.straddles:
-        facts = (
-            f"On the first part of the record nothing certain speaks against it ({percent(replay.first.saved_fraction)} "
-            f"saved, RMS error {number(replay.first.rms_error)} {unit}), but: {'; '.join(found.straddles)}."
+        return (
+            f"On the first part of the record nothing certain speaks against it ({facts}), but: "
+            f"{'; '.join(found.straddles)}.",
         )
-    return (facts,)
+    if reserve:
+        return (
+            f"On the first part of the record it has the fewest updates of all settings that keep what is asked for with "
+            f"{percent(1 - RESERVE)} of the accepted error in reserve: {facts}.",
+        )
+    return (
+        f"On the first part of the record it has the smallest error of the settings that keep what is asked for; none "
+        f"leaves {percent(1 - RESERVE)} of the accepted error in reserve: {facts}.",
+    )
 
 
 def _why_none(case: Case, seen: dict[int, Findings]) -> tuple[str, ...]:

@@ -175,8 +175,8 @@ def booster_pump(seed: int = 1) -> Scenario:
     rng, period = np.random.default_rng([seed, 4]), 0.5
     count = 43_200
     hours = fine_hours(count, period)
-    flow = 12.0 + 1.3 * drift(rng, count * FINE, 40.0, period / FINE)
-    flow += 1.5 * pulses(rng, hours, per_day=900, mean_hours=0.02)
+    flow = 12.0 + 0.5 * drift(rng, count * FINE, 40.0, period / FINE)
+    flow += 1.0 * pulses(rng, hours, per_day=900, mean_hours=0.02)
     # A drill: the brigade opens and closes the same hydrant again and again, in about a second each time.
     hydrant = np.zeros_like(hours)
     for begin in np.arange(0.4, 5.8, 0.2) + rng.uniform(-0.06, 0.06, 27):
@@ -194,12 +194,12 @@ def booster_pump(seed: int = 1) -> Scenario:
         period=period,
         setpoint=setpoint,
         load=loss - loss.mean(),
-        noise=rng.normal(0, 0.006, count),
+        noise=rng.normal(0, 0.004, count),
         y_step=0.01,
         u_step=0.01,
         start=pd.Timestamp("2025-09-09T06:00:00", tz="Europe/Oslo"),
         low=3.3,
-        high=5.2,
+        high=5.5,
     )
 
 

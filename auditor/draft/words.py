@@ -51,12 +51,13 @@ AUTOMATIC = frozenset(
         "auto automatic automatik automatisch automatique automatico aut a automat cascade cas kaskade regelung on ein"
     )
 )
-_UNITS = (
-    "m mm cm km m3/s m³/s m3/h m³/h m3/d l/s l/min l/h % bar mbar pa kpa mpa hpa psi k c f °c °f degc degf rpm 1/min "
-    "u/min tr/min hz s min h a ma v mv kv w kw mw kwh mg/l mg/l g/l ppm mnap mm/s m/s nm3/h kg/s kg/h t/h ph ntu ms/cm "
-    "µs/cm mwc mwk mca dbar -"
-).split()
-UNITS = frozenset(_UNITS)
+UNITS = frozenset(
+    _words(
+        "m mm cm km m3/s m³/s m3/h m³/h m3/d l/s l/min l/h % bar mbar pa kpa mpa hpa psi k c f °c °f degc degf rpm "
+        "1/min u/min tr/min hz s min h a ma v mv kv w kw mw kwh mg/l g/l ppm mnap mm/s m/s nm3/h kg/s kg/h t/h ph ntu "
+        "ms/cm µs/cm mwc mwk mca dbar -"
+    )
+)
 _ENDINGS: Mapping[str, str] = MappingProxyType(
     {
         "m3s": "m3/s", "m3h": "m3/h", "m3ph": "m3/h", "ls": "l/s", "lps": "l/s", "lpm": "l/min", "lmin": "l/min",
@@ -99,7 +100,7 @@ def names(header: str, role: str) -> str | None:
 
 
 def unit_of(header: str) -> str:
-    """Return the unit a header states, as in ``level [m]``, ``flow_m3h``, ``Druck in bar``; empty when there is none."""
+    """Return the unit a header states, as in ``level [m]``, ``flow_m3h``, ``Druck in bar``; empty without one."""
     for pattern in (_BRACKETED, _SLASHED):
         match = pattern.search(header)
         if match and is_unit(match[1]):

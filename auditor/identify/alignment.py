@@ -92,11 +92,11 @@ def setpoint_moves(signals: Signals) -> bool:
     return bool(np.any(np.diff(signals.r)[inside] != 0))
 
 
-def lay_out(signals: Signals, lag: int, terms: Terms, *, levels: bool, thin: bool = False) -> Design:
-    """Lay out the regression for one lag; `thin` keeps enough rows to compare lags and kinds."""
+def lay_out(signals: Signals, lag: int, terms: Terms, *, levels: bool, most: int | None = None) -> Design:
+    """Lay out the regression for one lag; `most` thins the rows, all of them when None."""
     rows = level_rows(signals, lag, terms) if levels else difference_rows(signals, lag, terms)
-    if thin:
-        rows = _thinned(signals, rows)
+    if most is not None and len(rows) > most:
+        rows = _thinned(signals, rows, most)
     return level_design(signals, lag, terms, rows) if levels else difference_design(signals, lag, terms, rows)
 
 
@@ -148,10 +148,11 @@ def _best_lag(signals: Signals, terms: Terms, *, robust: bool, levels: bool) -> 
     tried: list[tuple[Fit, int, Terms]] = []
     for lag in LAGS:
         at_lag = _best_pole(signals, terms, lag, levels=levels) if terms.derivative else terms
-        design = lay_out(signals, lag, at_lag, levels=levels, thin=True)
+        design = lay_out(signals, lag, at_lag, levels=levels, most=thresholds.SCAN_ROWS)
         if len(design.target) >= thresholds.ROWS_NEEDED:
             tried.append((solve(design, robust), lag, at_lag))
-    plausible = [item for item in tried if _plausible(item[0], item[2])]
+    longest = int(np.max(signals.length, initial=0))
+    plausible = [item for item in tried if _plausible(item[0], item[2], longest)]
     if not plausible:
         return None
     # In the order of LAGS the nearest lag comes first; a farther one must be clearly better.
@@ -161,18 +162,19 @@ def _best_lag(signals: Signals, terms: Terms, *, robust: bool, levels: bool) -> 
             fit, lag, found = item
     if terms.derivative:
         found = _refined_pole(signals, found, lag, robust=robust, levels=levels)
-        fit = solve(lay_out(signals, lag, found, levels=levels, thin=True), robust)
+        fit = solve(lay_out(signals, lag, found, levels=levels, most=thresholds.SCAN_ROWS), robust)
     table = tuple(sorted((at, other.relative) for other, at, _ in tried))
     return Match(terms=found, lag=lag, fit=fit, levels=levels, table=table)
 
 
-def _plausible(fit: Fit, terms: Terms) -> bool:
-    """Refuse coefficients that are no controller: parts that work against each other."""
+def _plausible(fit: Fit, terms: Terms, longest: int) -> bool:
+    """Refuse coefficients that are no controller: parts that work against each other, an integral that takes longer
+    than the longest span."""
     gain, *rest = fit.coefficients
     if terms.integral:
         # The forward form's gain K + Ki is the largest of the three: a pure integral controller has only that one.
         forward = gain + rest[0]
-        if forward * rest[0] <= 0:
+        if forward * rest[0] <= 0 or abs(forward) > longest * abs(rest[0]):
             return False
     return terms.derivative is None or gain * rest[1 if terms.integral else 0] > 0
 
@@ -195,7 +197,8 @@ def _best_pole(signals: Signals, terms: Terms, lag: int, *, levels: bool) -> Ter
     """Return the grid's best derivative pole by least squares."""
 
     def left(pole: float) -> float:
-        return solve(lay_out(signals, lag, replace(terms, pole=pole), levels=levels, thin=True), False).relative
+        design = lay_out(signals, lag, replace(terms, pole=pole), levels=levels, most=thresholds.SCAN_ROWS)
+        return solve(design, robust=False).relative
 
     return replace(terms, pole=min(_POLES, key=left))
 
@@ -206,7 +209,7 @@ def _refined_pole(signals: Signals, terms: Terms, lag: int, *, robust: bool, lev
     low, high = _POLES[max(0, at - 1)], (*_POLES, 0.99)[at + 1]
 
     def left(pole: float) -> float:
-        design = lay_out(signals, lag, replace(terms, pole=pole), levels=levels, thin=True)
+        design = lay_out(signals, lag, replace(terms, pole=pole), levels=levels, most=thresholds.SEARCH_ROWS)
         return solve(design, robust, _SEARCH_PASSES).relative
 
     found = minimize_scalar(left, bounds=(low, high), method="bounded", options={"xatol": 1e-13, "maxiter": 80})
@@ -235,11 +238,9 @@ def _levels_hold(levels: Match, differences: Match, quantum: float) -> bool:
     return on_levels <= max(quantum, 1.5 * on_differences / math.sqrt(2.0))
 
 
-def _thinned(signals: Signals, rows: IntArray) -> IntArray:
+def _thinned(signals: Signals, rows: IntArray, most: int) -> IntArray:
     """Every n-th row, and all around setpoint moves."""
-    if len(rows) <= thresholds.SCAN_ROWS:
-        return rows
-    every = -(-len(rows) // thresholds.SCAN_ROWS)
+    every = -(-len(rows) // most)
     moved = np.flatnonzero(np.diff(signals.r, prepend=signals.r[0]) != 0)
     near = np.isin(rows, np.concatenate([moved - 1, moved, moved + 1])) if len(moved) < len(rows) // 10 else False
     chosen = (np.arange(len(rows)) % every == 0) | near

@@ -159,12 +159,13 @@ def _gains(record: Record, controller: Pid, plant: Plant, null: float) -> Iterat
     time = float(fitted[0] / fitted[1]) if len(fitted) > 1 and fitted[1] != 0 else math.inf
     other = replace(controller, gain=float(fitted[0]), integral_time=time, integral="backward")
     if null_replay(record, other, plant) < thresholds.CAUSE_HALVES * null:
-        given = coefficients_of(controller, record.period)
-        yield (
-            f"wrong gains: the record shows gain {number(other.gain)} and integral time "
-            f"{duration(time) if math.isfinite(time) else 'none'}, the controller has gain {number(float(given[0]))} and "
-            f"{duration(controller.integral_time) if math.isfinite(controller.integral_time) else 'none'}"
-        )
+        given = replace(controller, gain=float(coefficients_of(controller, record.period)[0]))
+        yield f"wrong gains: the record shows {_in_words(other)} (backward form), the controller has {_in_words(given)}"
+
+
+def _in_words(controller: Pid) -> str:
+    time = duration(controller.integral_time) if math.isfinite(controller.integral_time) else "none"
+    return f"gain {number(controller.gain)} and integral time {time}"
 
 
 def _feedforward(record: Record, rho: FloatArray) -> Iterator[str]:

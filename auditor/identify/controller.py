@@ -15,6 +15,7 @@ from auditor.controllers.pid import INTEGRALS, Pid
 from auditor.errors import Problem
 from auditor.identify import refusals, thresholds
 from auditor.identify.alignment import LAGS, Match, best_match, lay_out, setpoint_moves, shift_actuator, skew_words
+from auditor.identify.coarse import on_row_clock, rows_apart
 from auditor.identify.gains import coefficients_of, controller_of, roundest, stated_controller, terms_of
 from auditor.identify.limits import saturates
 from auditor.identify.regression import Fit, Signals, measured, read_signals, residual_of
@@ -83,17 +84,42 @@ def recover_controller(record: Record, loop: Loop) -> Recovery:
         With `usable` False and a `refusal` when nothing explains the actuator.
     """
     settings = loop.controller
-    signals = read_signals(record, settings.error_deadband if settings else 0.0)
-    match = best_match(signals, saturates=saturates(record), quantum=record.u_quantum or 0.0)
+    rows = on_row_clock(record)
+    signals = read_signals(rows, settings.error_deadband if settings else 0.0)
     refusal = refusals.dead_or_copied(signals)
-    if settings is None and match is None:
-        refusal = refusal or refusals.too_few_rows(record)
     if refusal is not None:
         return _refused(record, settings, refusal)
+    match = best_match(signals, saturates=saturates(rows), quantum=rows.u_quantum or 0.0)
     if settings is not None:
-        return _from_file(record, signals, settings, match)
-    assert match is not None
-    return _from_log(record, signals, match)
+        found = _from_file(rows, signals, settings, match)
+    elif match is not None:
+        found = _from_log(rows, signals, match, coarse=rows is not record)
+    else:
+        return _refused(record, settings, refusals.too_few_rows(record))
+    feedforward = _feedforward_words(match, loop)
+    return _on_loop_clock(replace(found, reasons=(*found.reasons, *feedforward)), record, settings)
+
+
+def _on_loop_clock(found: Recovery, record: Record, settings: ControllerSettings | None) -> Recovery:
+    """Count the skew in the loop's samples, and find the anti-windup, which needs all of them."""
+    apart = rows_apart(record)
+    found = replace(found, skew_samples=found.skew_samples * apart)
+    if found.usable and (settings is None or settings.anti_windup is None):
+        found = replace(found, controller=anti_windup_of(shift_actuator(record, found.skew_samples), found.controller))
+    if apart == 1:
+        return found
+    words = f"the log has a row every {duration(record.log_step)}: what is found in it is approximate"
+    return replace(found, reasons=(*found.reasons, words))
+
+
+def _feedforward_words(match: Match | None, loop: Loop) -> tuple[str, ...]:
+    if match is None or match.terms.feedforward == 0:
+        return ()
+    gains = match.fit.coefficients[-match.terms.feedforward :]
+    names = [signal.column or "disturbance" for signal in loop.signals.disturbances]
+    names += ["disturbance"] * (len(gains) - len(names))
+    listed = ", ".join(f"{name} × {number(float(gain))}" for name, gain in zip(names, gains, strict=False))
+    return (f"a feedforward from declared disturbances acts beside the controller ({listed})",)
 
 
 def _refused(record: Record, settings: ControllerSettings | None, refusal: Problem) -> Recovery:
@@ -110,11 +136,9 @@ def _refused(record: Record, settings: ControllerSettings | None, refusal: Probl
     )
 
 
-def _from_log(record: Record, signals: Signals, match: Match) -> Recovery:
-    controller, by_roundness = roundest(match, record)
+def _from_log(record: Record, signals: Signals, match: Match, *, coarse: bool) -> Recovery:
+    controller, by_roundness = roundest(match, record, coarse=coarse)
     refusal = refusals.after_fitting(record, signals, match)
-    if refusal is None:
-        controller = anti_windup_of(shift_actuator(record, match.lag), controller)
     own_law = match.terms.kind == "P" and not setpoint_moves(signals) and match.fit.relative < thresholds.OWN_LAW
     reasons = [_how_found(match, record), *_skew_words(match.lag)]
     if by_roundness:
@@ -143,6 +167,7 @@ def _from_file(record: Record, signals: Signals, settings: ControllerSettings, m
     stated = stated_controller(settings, record)
     forms = (settings.integral,) if settings.integral else ("backward", *(f for f in INTEGRALS if f != "backward"))
     levels = match.levels if match is not None else record.u_quantum is not None
+    signals = _without_feedforward(signals, match)
     tried = {
         (lag, form): _left_by(signals, replace(stated, integral=form), lag, record, levels=levels)
         for lag in LAGS
@@ -155,8 +180,6 @@ def _from_file(record: Record, signals: Signals, settings: ControllerSettings, m
         lag = match.lag
         form = _first_clearly_best({(lag, f): tried[lag, f].relative for f in forms})[1]
     chosen = replace(stated, integral=form)
-    if settings.anti_windup is None:
-        chosen = anti_windup_of(shift_actuator(record, lag), chosen)
     left = _left_words(tried[lag, form].relative)
     reasons = [f"the controller is the loop file's; {left}", *_skew_words(lag), *reasons]
     own_law = math.isinf(chosen.integral_time) and chosen.derivative_time == 0 and not setpoint_moves(signals)
@@ -171,6 +194,14 @@ def _from_file(record: Record, signals: Signals, settings: ControllerSettings, m
         own_law=own_law,
         bias=_bias(record, chosen, lag),
     )
+
+
+def _without_feedforward(signals: Signals, match: Match | None) -> Signals:
+    """Take away what declared disturbances do, so that the file's gains are compared with the controller's part."""
+    if match is None or match.terms.feedforward == 0:
+        return signals
+    part = match.fit.coefficients[-match.terms.feedforward :] @ signals.w
+    return replace(signals, u=signals.u - np.roll(part, match.lag))
 
 
 def _left_by(signals: Signals, controller: Pid, lag: int, record: Record, *, levels: bool) -> Fit:
@@ -212,7 +243,8 @@ def _how_found(match: Match, record: Record) -> str:
     """Say by which regression the controller was found."""
     kind, side = match.terms.kind, "levels" if match.levels else "differences"
     norm = "least absolute residuals" if match.fit.robust else "least squares"
-    return f"{kind} controller found in the log from {side} by {norm}; {_left_words(match.fit.relative)}"
+    rounding = f" (rounded to {number(record.u_quantum)})" if match.levels and record.u_quantum else ""
+    return f"{kind} controller found in the log from {side}{rounding} by {norm}; {_left_words(match.fit.relative)}"
 
 
 def _left_words(relative: float) -> str:

@@ -65,7 +65,7 @@ class Ensemble:
 def estimate(
     record: Record, controller: Pid, *, plant: str | None, seed: int = 1, quick: bool = False, workers: int = 2,
     progress: Progress = silent,
-) -> Ensemble:  # fmt: skip
+) -> Ensemble:
     """Return plants that could have made the record with this controller.
 
     Parameters
@@ -109,7 +109,7 @@ def estimate(
 def _runs(
     spectra: Spectrum, kinds: Family, weights: Tuning, seeds: Sequence[np.random.SeedSequence], workers: int,
     progress: Progress,
-) -> list[sampler.Members]:  # fmt: skip
+) -> list[sampler.Members]:
     """All runs, on threads (the compiled generations release the lock), in the order of their seeds."""
     done = np.zeros(len(seeds))
     lock = Lock()

@@ -139,7 +139,7 @@ def to_plant(
         log_posterior=log_posterior,
         load=_load(x, entry),
         parameters=(*(float(v) for v in x), float(m), float(entry)),
-    )  # fmt: skip
+    )
 
 
 def to_point(plant: Plant) -> tuple[FloatArray, IntArray]:

@@ -26,6 +26,9 @@ from auditor.loop import ControllerSettings
 _SHARE = {"forward": 1.0, "backward": 0.0, "trapezoid": 0.5}
 """Share of Ki that the form's gain has more than the backward form's."""
 
+_NO_GAIN = 1e-6
+"""Gain, as a share of K h / Ti, that is none."""
+
 _DIGITS = 8
 """Digits after which a setting is no round number."""
 
@@ -102,12 +105,16 @@ def controller_of(match: Match, record: Record, form: str) -> Pid:
     return replace(plain, setpoint_weight=1.0 + values.pop(0) / gain) if terms.weight else plain
 
 
-def roundest(match: Match, record: Record) -> tuple[Pid, bool]:
+def roundest(match: Match, record: Record, *, coarse: bool = False) -> tuple[Pid, bool]:
     """Return the controller in the integral form with the roundest settings, and whether roundness decided."""
+    if coarse:
+        return controller_of(match, record, "trapezoid"), False
     if not match.terms.integral:
         return controller_of(match, record, "backward"), False
     every = [controller_of(match, record, form) for form in ("backward", *(f for f in INTEGRALS if f != "backward"))]
-    sound = [controller for controller in every if controller.integral_time > 0] or every
+    # A pure integral controller has a gain in the forward form only.
+    step = abs(every[0].integral_gain) * record.period
+    sound = [c for c in every if c.integral_time > 0 and abs(c.gain) > _NO_GAIN * step] or every
     digits = [_digits(controller) for controller in sound]
     fewest = int(np.argmin(digits))
     others = [d for i, d in enumerate(digits) if i != fewest]

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from auditor.arrays import BoolArray
+from auditor.identify import thresholds
 from auditor.logs.record import Record
 
 _RUN = 3
@@ -29,7 +30,7 @@ def stuck_at_extreme(record: Record) -> BoolArray:
         return stuck
     u = np.where(record.in_span, record.u, np.nan)
     for extreme in (np.nanmax(u), np.nanmin(u)):
-        stuck |= _long_runs(u == extreme)
+        stuck |= _long_runs(u == extreme, _RUN)
     moving = np.abs(np.diff(record.e, prepend=np.nan)) > 0
     return stuck if bool(np.any(moving & stuck)) else np.zeros(len(record), dtype=np.bool_)
 
@@ -43,6 +44,14 @@ def slewing(record: Record) -> BoolArray:
         return np.asarray(moves >= nearly)
 
 
+def dead(record: Record) -> BoolArray:
+    """True where measurement, setpoint and actuator all rest for `DEAD_RUN` samples or more, shape (N,)."""
+    resting = np.ones(len(record), dtype=np.bool_)
+    for signal in (record.y, record.r, record.u):
+        resting &= np.diff(signal, prepend=np.nan) == 0
+    return _long_runs(resting, thresholds.DEAD_RUN)
+
+
 def saturates(record: Record) -> bool:
     """Tell whether the actuator is ever at a limit inside the spans."""
     return bool(np.any(at_limit(record) & record.in_span))
@@ -53,10 +62,10 @@ def _slack(record: Record) -> float:
     return max(0.5 * (record.u_quantum or 0.0), 1e-9 * (width if np.isfinite(width) else 0.0))
 
 
-def _long_runs(mask: BoolArray) -> BoolArray:
-    """Keep runs of True of at least `_RUN` samples."""
+def _long_runs(mask: BoolArray, shortest: int) -> BoolArray:
+    """Keep runs of True of at least `shortest` samples."""
     edges = np.flatnonzero(np.diff(np.concatenate(([0], mask.astype(np.int8), [0]))))
     kept = np.zeros(len(mask), dtype=np.bool_)
     for start, stop in zip(edges[::2], edges[1::2], strict=True):
-        kept[start:stop] = stop - start >= _RUN
+        kept[start:stop] = stop - start >= shortest
     return kept

@@ -22,7 +22,7 @@ _STATE_IT = "state the controller in the loop file ([controller] gain, integral_
 
 def dead_or_copied(signals: Signals) -> Problem | None:
     """Return why the columns are no loop at all, or None; says nothing about a handful of samples."""
-    good = signals.good
+    good = signals.age >= 0
     if int(np.count_nonzero(good)) < thresholds.ROWS_NEEDED:
         return None
     if float(np.ptp(signals.u[good])) == 0.0:

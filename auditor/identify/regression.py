@@ -7,7 +7,8 @@ filtered derivative signal, ``x[k] = a x[k−1] + s[k] − s[k−1]``, a = Tf/(T
     u[k + lag] − u[k + lag − 1] = the differences of the right side    differences
 
 K is the gain of the backward form, Ki = K h / Ti, g = K Td / (Tf + h), w = K (β − 1). The forward and the trapezoid
-form are the same equation with K + Ki and K + Ki / 2 in place of K. Declared disturbances may enter like r: feedforward.
+form are the same equation with K + Ki and K + Ki / 2 in place of K. Declared disturbances may enter
+like r: feedforward.
 """
 
 from __future__ import annotations
@@ -20,11 +21,14 @@ import numpy as np
 from scipy.signal import lfilter
 
 from auditor.arrays import BoolArray, FloatArray, IntArray
-from auditor.identify.limits import at_limit, slewing
+from auditor.identify.limits import at_limit, dead, slewing
 from auditor.logs.record import Record
 
 PASSES = 30
 """Reweightings of the least-absolute fit."""
+
+_FLOATING = 1e-9
+"""Relative residual of floating point: differences of neighbours lose some of u's 16 digits."""
 
 _SETTLED = 1e-9
 """What may be left of the unknown derivative state at the beginning of a span before its rows are used."""
@@ -71,23 +75,29 @@ class Design:
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
 class Fit:
-    """Coefficients, residual (n,), its scale (rms; mean absolute value when robust), and that over the target's."""
+    """What one regression found.
+
+    Attributes
+    ----------
+    coefficients : ndarray, shape (p,)
+    residual : ndarray, shape (n,)
+    scale, relative : float
+        Scale of the residual (rms, or mean absolute value when robust), and that over the target's.
+    robust, exact : bool
+        `exact` when floating point is all that is left; of a robust fit, on most rows that move.
+    """
 
     coefficients: FloatArray
     residual: FloatArray
     scale: float
     relative: float
     robust: bool
+    exact: bool = False
 
     @property
     def rows(self) -> int:
         """Number of rows used."""
         return len(self.residual)
-
-    @property
-    def exact(self) -> bool:
-        """True when nothing but floating point is left (u − u of neighbours loses some of its 16 digits)."""
-        return self.relative < 1e-9
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -100,8 +110,8 @@ class Signals:
         `e` with the controller's own dead-band.
     w : ndarray, shape (n_w, N)
     good, free, moving : ndarray of bool, shape (N,)
-    age : ndarray of int, shape (N,)
-        Samples since the span began, −1 outside.
+    age, length : ndarray of int, shape (N,)
+        Samples since the span began, −1 outside, and samples of the span.
     stretch : ndarray of int, shape (N,)
         Number of the unbroken stretch away from limits.
     """
@@ -115,19 +125,22 @@ class Signals:
     free: BoolArray
     moving: BoolArray
     age: IntArray
+    length: IntArray
 
 
 def read_signals(record: Record, deadband: float = 0.0) -> Signals:
     """Prepare a record for regressions."""
-    age = np.full(len(record), -1, dtype=np.int64)
+    age, length = np.full(len(record), -1, dtype=np.int64), np.zeros(len(record), dtype=np.int64)
     for span in record.spans:
         age[span.start : span.stop] = np.arange(len(span))
-    good = record.valid & (age >= 0)
+        length[span.start : span.stop] = len(span)
+    good = record.valid & (age >= 0) & ~dead(record)
     free = good & ~at_limit(record)
     e = np.where(np.abs(record.e) <= deadband, 0.0, record.e) if deadband > 0 else record.e
     e, y, r, u = (np.where(good, x, 0.0) for x in (e, record.y, record.r, record.u))
     w = np.where(good & np.isfinite(record.w), record.w, 0.0)
-    return Signals(e=e, y=y, r=r, u=u, w=w, good=good, free=free, moving=free & ~slewing(record), age=age)
+    moving = free & ~slewing(record)
+    return Signals(e=e, y=y, r=r, u=u, w=w, good=good, free=free, moving=moving, age=age, length=length)
 
 
 def derivative_state(signals: Signals, terms: Terms) -> FloatArray:
@@ -142,7 +155,7 @@ def derivative_state(signals: Signals, terms: Terms) -> FloatArray:
 def difference_rows(signals: Signals, lag: int, terms: Terms) -> IntArray:
     """Samples k whose equation in differences holds: neither actuator sample at a limit, all inside one span."""
     now, before = _shifted(signals.moving, lag), _shifted(signals.moving, lag - 1)
-    oldest = max(1, 1 - lag) + _settling(terms)
+    oldest = max(1, 1 - lag) + _settling(signals, terms)
     same = _shifted(signals.age, lag) - signals.age == lag
     return np.flatnonzero(
         now & before & same & _shifted(signals.good, 0) & _shifted(signals.good, -1) & (signals.age >= oldest)
@@ -153,7 +166,7 @@ def level_rows(signals: Signals, lag: int, terms: Terms) -> IntArray:
     """Samples k whose equation in levels holds."""
     same = _shifted(signals.age, lag) - signals.age == lag
     usable = _shifted(signals.moving, lag) & signals.good & same
-    return np.flatnonzero(usable & (signals.age >= _settling(terms)))
+    return np.flatnonzero(usable & (signals.age >= _settling(signals, terms)))
 
 
 def difference_design(signals: Signals, lag: int, terms: Terms, rows: IntArray) -> Design:
@@ -190,15 +203,27 @@ def level_design(signals: Signals, lag: int, terms: Terms, rows: IntArray) -> De
 def solve(design: Design, robust: bool, passes: int = PASSES) -> Fit:
     """Fit by least squares, or by least absolute residuals where rare rows obey another law."""
     weights = np.ones(len(design.target))
+    if len(weights) == 0:
+        nothing = np.zeros(design.columns.shape[1])
+        return Fit(coefficients=nothing, residual=weights, scale=math.inf, relative=math.inf, robust=robust)
     coefficients = _weighted(design, weights)
     residual = residual_of(design, coefficients, weights)
     for _ in range(passes if robust else 0):
-        floor = 1e-12 * float(np.mean(np.abs(residual))) + np.finfo(float).tiny
-        weights = 1.0 / np.maximum(np.abs(residual), max(floor, 1e-14 * float(np.max(np.abs(design.target)))))
-        weights /= np.max(weights)
+        before = coefficients
+        weights = _inverse_size(residual, float(np.max(np.abs(design.target))))
         coefficients = _weighted(design, weights)
         residual = residual_of(design, coefficients, weights)
+        if np.all(np.abs(coefficients - before) <= 1e-14 * np.abs(before)):
+            break
     return measured(design, coefficients, residual, robust)
+
+
+def _inverse_size(residual: FloatArray, largest: float) -> FloatArray:
+    """Weights that turn squares into absolute values; rows that fit to floating point do not outweigh all others."""
+    size = np.abs(residual)
+    floor = max(1e-12 * float(np.mean(size)), 1e-14 * largest, np.finfo(float).tiny)
+    weights = 1.0 / np.maximum(size, floor)
+    return np.asarray(weights / np.max(weights))
 
 
 def measured(design: Design, coefficients: FloatArray, residual: FloatArray, robust: bool) -> Fit:
@@ -206,7 +231,16 @@ def measured(design: Design, coefficients: FloatArray, residual: FloatArray, rob
     whole = residual_of(design, np.zeros(len(coefficients)), np.ones(len(residual)))
     scale, own = _scale(residual, robust), _scale(whole, robust)
     relative = scale / own if own > 0 else math.inf
-    return Fit(coefficients=coefficients, residual=residual, scale=scale, relative=relative, robust=robust)
+    moving = np.abs(residual)[design.target != 0]
+    mostly = robust and len(moving) > 0 and float(np.median(moving)) < _FLOATING * own
+    return Fit(
+        coefficients=coefficients,
+        residual=residual,
+        scale=scale,
+        relative=relative,
+        robust=robust,
+        exact=relative < _FLOATING or mostly,
+    )
 
 
 def residual_of(design: Design, coefficients: FloatArray, weights: FloatArray) -> FloatArray:
@@ -247,10 +281,11 @@ def _scale(residual: FloatArray, robust: bool) -> float:
     return float(np.mean(np.abs(residual)) if robust else np.sqrt(np.mean(residual**2)))
 
 
-def _settling(terms: Terms) -> int:
+def _settling(signals: Signals, terms: Terms) -> IntArray:
+    """Samples until the unknown derivative state is forgotten, at most a quarter of the span, shape (N,)."""
     if terms.derivative is None or terms.pole <= 0:
-        return 0
-    return min(1000, math.ceil(math.log(_SETTLED) / math.log(terms.pole)))
+        return np.zeros(len(signals.age), dtype=np.int64)
+    return np.minimum(math.ceil(math.log(_SETTLED) / math.log(terms.pole)), signals.length // 4)
 
 
 def _shifted(values: _Flags, lag: int) -> _Flags:

@@ -144,7 +144,7 @@ def explained_by_error(rho: FloatArray, record: Record) -> float:
 
     Differences are compared (of rho with those of e, e itself and those of w): rho and the sum of e both wander, and
     two wandering series explain each other by chance. The error's three moves before let a derivative take part.
-    Samples at a limit or slewing, and those right after, are left out: rho is held there. Wrong gains make this share 1.
+    Samples at a limit or slewing, and those right after, are left out: rho is held there. Wrong gains alone give 1.
     """
     moved = moves(record.e)
     before = [np.concatenate([np.full(lag, np.nan), moved[: len(moved) - lag]]) for lag in range(1, _MEMORY + 1)]
@@ -197,7 +197,7 @@ def _null_deviation(record: Record, controller: Pid, plant: Plant, rho: FloatArr
         replay_every_sample(
             y, r, u, injected, span.start, span.stop,
             A, B0, B1, C, plant.delay, record.y_quantum or 0.0, pid, form, replayed,
-        )  # fmt: skip
+        )
     return np.where(record.in_span, replayed - record.y, 0.0)
 
 

@@ -53,7 +53,7 @@ class Members:
 def run(
     spectrum: Spectrum, kinds: Family, weights: Tuning, seed: int | np.random.SeedSequence,
     observe: Callable[[float], None] = lambda share: None,
-) -> Members:  # fmt: skip
+) -> Members:
     """Return the members of one run.
 
     Parameters

@@ -91,7 +91,7 @@ def spectrum(record: Record, controller: Pid) -> Spectrum:
         w=read_only(w), y=read_only(y[order]), u=read_only(u[order]), weight=read_only(weight[order]),
         span=read_only(span[order]), edges=read_only(_edges(w)), closed=closed_share(record, spans),
         controller=controller, period=record.period,
-    )  # fmt: skip
+    )
 
 
 def usable_spans(record: Record) -> tuple[Span, ...]:

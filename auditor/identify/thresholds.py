@@ -18,9 +18,10 @@ EXPLAINED_SHARE = 0.90
 LONGEST_SKEW = 3
 """Samples by which the actuator's column may be early or late; further shifts mean another clock."""
 
-UNEXPLAINED_LIMIT = 0.5
-"""A controller that leaves half of the actuator's movement is none: cascades logged 60 times too coarsely leave
-0.6–1.0 of it, single controllers below 0.48 (Tennessee Eastman logs)."""
+UNEXPLAINED_LIMIT = 0.3
+"""A controller that leaves this much of the actuator's movement is none. Cascades logged 60 times too coarsely leave
+0.6–1.0 of it, single fast loops logged so 0.15–0.48 (Tennessee Eastman logs); the null replay is above `NULL_LIMIT`
+long before this."""
 
 UNEXPLAINED_LEVEL = 0.1
 """The same for an actuator whose own noise hides its movement between samples: what is left of its level."""
@@ -48,11 +49,18 @@ HEAVY_TAIL = 0.2
 SCHEME_BETTER = 0.9
 """Another anti-windup or integral form than the one at hand must leave at most this share of what that one leaves."""
 
+DEAD_RUN = 20
+"""Samples in a row without any movement of measurement, setpoint and actuator that are taken for a dead loop: they hold
+nothing about the controller, and their perfect fit would speak for any."""
+
 ROWS_NEEDED = 50
 """Samples away from limits below which nothing is recovered: four coefficients need an order more rows than that."""
 
-SCAN_ROWS = 20_000
+SCAN_ROWS = 6_000
 """Rows that are enough to find the lag and the kind of controller; the gains then come from all rows."""
+
+SEARCH_ROWS = 24_000
+"""Rows that are enough to search a derivative's filter."""
 
 CAUSE_HALVES = 0.5
 """A change counts as the cause of a bad null replay when it brings the null replay down to this share."""

@@ -18,21 +18,25 @@ from auditor.logs.grid import Grid, lay_grid, typical_spacing
 from auditor.logs.log import Log
 from auditor.logs.modes import read_modes
 from auditor.logs.order import Order, put_in_order
+from auditor.logs.reader import read_log
 from auditor.logs.record import Record, Span
 from auditor.logs.runs import hold
 from auditor.logs.spans import bridge_samples, causes, held_inside, inside, lost_hours, spans_of
 from auditor.logs.traces import Column, constant_trace, read_column, sample
 from auditor.loop import Loop, Signal
+from auditor.progress import Progress, silent
 
 __all__ = ["align", "read_record", "require_usable"]
 
 
-def read_record(loop: Loop) -> Record:
+def read_record(loop: Loop, observe: Progress = silent) -> Record:
     """Read the log a loop file names and align it.
 
     Parameters
     ----------
     loop : Loop
+    observe : Progress, optional
+        Told how much of the reading is done.
 
     Returns
     -------
@@ -43,9 +47,7 @@ def read_record(loop: Loop) -> Record:
     LogError
         When the log cannot be read as the loop file describes it, or does not fit its period.
     """
-    from auditor.logs.reader import read_log
-
-    return align(read_log(loop), loop)
+    return align(read_log(loop, observe), loop)
 
 
 def align(log: Log, loop: Loop) -> Record:
@@ -168,7 +170,7 @@ class _Marks:
 def _evidence(log: Log, loop: Loop, order: Order, grid: Grid, traces: list[Trace], marks: _Marks) -> Evidence:
     """Lay everything before the checks."""
     return Evidence(
-        recorded=log.time,
+        recorded=log.time[~np.isin(log.time, order.stray)] if len(order.stray) else log.time,
         stray=order.stray,
         stamps=order.stamps,
         repeated=order.repeated,

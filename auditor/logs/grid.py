@@ -18,6 +18,7 @@ SAME_STEP = 0.05
 _TOLERANCE = 0.25
 _ON_CLOCK = 0.1
 _CONCENTRATED = 0.8
+_MOSTLY = 0.9
 _SITTING = 1e-5
 _UNSEEN = 0.01
 _FEWEST_MOVES = 20
@@ -184,6 +185,12 @@ def _typical_offset(stamps: IntArray, origin: int, unit: float) -> tuple[int, fl
     beside = phase - centre
     offset = centre + float(np.median(beside - np.rint(beside)))
     return (0 if abs(offset) < 1e-6 else round(offset * unit * 1e9)), concentration
+
+
+def comes_evenly(instants: IntArray) -> bool:
+    """Tell whether nearly all values come as many instants after the one before as the typical one does."""
+    steps = thinned(instants[1:]) - thinned(instants[:-1])
+    return len(steps) == 0 or float(np.mean(np.abs(steps - np.median(steps)) <= 1)) > _MOSTLY
 
 
 def last_at(values: FloatArray, grid: Grid) -> FloatArray:

@@ -134,18 +134,18 @@ def _overlaps(time: IntArray, stamps: IntArray) -> BoolArray:
     Rows that merely arrive late leave no more stamps in the stretch than usual; a repeated stretch holds about
     twice as many, and nobody can tell which of its rows came first. Rows in no order at all tell nothing.
     """
-    mark = np.zeros(len(stamps) + 1, dtype=np.int64)
+    mark: IntArray = np.zeros(len(stamps) + 1, dtype=np.int64)
     behind = np.flatnonzero(time[1:] < time[:-1])
     if len(behind) == 0 or len(behind) > max(_FEW, _SHARE * len(time)):
-        return mark[:-1] != 0
+        return np.zeros(len(stamps), dtype=np.bool_)
     start, end = time[behind + 1], time[behind]
     own = np.unique(time)
     there = np.searchsorted(own, end, side="right") - np.searchsorted(own, start, side="left")
-    twice = there > 1.5 * ((end - start) / _usual_spacing(time) + 1) + 1
+    extent = end.astype(np.float64) - start.astype(np.float64)
+    twice = there > 1.5 * (extent / _usual_spacing(time) + 1) + 1
     np.add.at(mark, np.searchsorted(stamps, start[twice], side="left"), 1)
     np.add.at(mark, np.searchsorted(stamps, end[twice], side="right"), -1)
-    overlapped: BoolArray = np.cumsum(mark[:-1]) > 0
-    return overlapped
+    return np.asarray(np.cumsum(mark[:-1]) > 0, dtype=np.bool_)
 
 
 def _usual_spacing(time: IntArray) -> float:

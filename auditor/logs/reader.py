@@ -6,10 +6,12 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from types import MappingProxyType
+from typing import Any, TypeVar
 
 import numpy as np
+import numpy.typing as npt
 
-from auditor.arrays import BoolArray, FloatArray, IntArray, read_only
+from auditor.arrays import BoolArray, FloatArray, IntArray
 from auditor.errors import LogError, Problem, raise_all
 from auditor.logs.cells import TextArray, read_mode, read_numbers, shown_counts
 from auditor.logs.files import describe_inputs, kind, label, resolve
@@ -25,6 +27,7 @@ from auditor.loop import LogSource, Loop
 from auditor.progress import Progress, silent
 
 _STAGE = "read the log"
+_Array = TypeVar("_Array", bound=npt.NDArray[Any])
 
 
 @dataclass(frozen=True, eq=False, slots=True)
@@ -66,9 +69,9 @@ def read_log(loop: Loop, observe: Progress = silent) -> Log:
     channels, texts, found = _channels(parts, wanted, time)
     observe(_STAGE, 0.9)
     log = Log(
-        time=read_only(time),
-        channels=MappingProxyType({name: read_only(values) for name, values in channels.items()}),
-        texts=MappingProxyType({name: read_only(words) for name, words in texts.items()}),
+        time=_sealed(time),
+        channels=MappingProxyType({name: _sealed(values) for name, values in channels.items()}),
+        texts=MappingProxyType({name: _sealed(words) for name, words in texts.items()}),
         rows=len(time),
         inputs=describe_inputs(paths, source.folder),
         zone=zone,
@@ -76,6 +79,16 @@ def read_log(loop: Loop, observe: Progress = silent) -> Log:
     )
     observe(_STAGE, 1.0)
     return log
+
+
+def _sealed(array: _Array) -> _Array:
+    """Make an array that nobody else holds read-only, without the copy that `arrays.read_only` has to make."""
+    array.flags.writeable = False
+    return array
+
+
+def _joined(pieces: Sequence[_Array]) -> _Array:
+    return pieces[0] if len(pieces) == 1 else np.concatenate(pieces)
 
 
 def _check_stated(source: LogSource) -> None:
@@ -105,23 +118,30 @@ def _read_table(path: Path, source: LogSource, wanted: Wanted) -> RawTable:
 
 def _on_utc(parts: Sequence[_Part], source: LogSource) -> tuple[IntArray, str, tuple[Finding, ...]]:
     """Join the time columns and put local stamps on UTC."""
-    time = np.concatenate([part.stamps.nanoseconds for part in parts])
-    local = np.concatenate([part.stamps.local for part in parts])
-    leap = np.concatenate([part.stamps.leap for part in parts])
+    time = _joined([part.stamps.nanoseconds for part in parts])
+    local = _joined([part.stamps.local for part in parts])
+    leap = _joined([part.stamps.leap for part in parts])
     findings: tuple[Finding, ...] = ()
     problems: list[Problem] = []
     if local.any():
         if source.timezone is None:
             raise LogError(_no_zone(parts, local))
-        placed = to_utc(time[local], find_zone(source.timezone), source.ambiguous or "order")
         rows = np.flatnonzero(local)
-        time[local] = placed.utc
+        placed = to_utc(time[rows], find_zone(source.timezone), source.ambiguous or "order")
+        time = placed.utc if local.all() else _replaced(time, rows, placed.utc)
         problems += _clock_problems(parts, rows[placed.missing], rows[placed.tangled], source.timezone)
         findings = _one_pass(time[rows[placed.assumed]])
-    wrong_leaps = np.flatnonzero(leap & ~ends_a_month(time))
+    leaps = np.flatnonzero(leap)
+    wrong_leaps = leaps[~ends_a_month(time[leaps])]
     problems += _problem_at(parts, wrong_leaps, "A second 60 stands where no leap second can be.", *_LEAP)
     raise_all(LogError, problems)
     return time, source.timezone if local.any() and source.timezone else "UTC", findings
+
+
+def _replaced(time: IntArray, rows: IntArray, values: IntArray) -> IntArray:
+    time = time.copy()
+    time[rows] = values
+    return time
 
 
 _LEAP = ("23:59:60 UTC on the last day of a month", "correct the stamps that name second 60")
@@ -203,16 +223,16 @@ def _channels(
             findings.append(_text_states(name, words, time))
     raise_all(LogError, merged(problems))
     if wanted.mode is not None:
-        texts[wanted.mode] = np.concatenate([read_mode(part.table.mode) for part in parts])
+        texts[wanted.mode] = _joined([read_mode(part.table.mode) for part in parts])
     return channels, texts, tuple(findings)
 
 
 def _channel(parts: Sequence[_Part], name: str) -> tuple[FloatArray, TextArray | None]:
     read = for_all(lambda part: read_numbers(part.table.numbers[name], part.table, name), parts)
-    numbers = np.concatenate([values for values, _ in read])
+    numbers = _joined([values for values, _ in read])
     if all(words is None for _, words in read):
         return numbers, None
-    texts = np.concatenate([np.full(len(v), None, dtype=object) if w is None else w for v, w in read])
+    texts = _joined([np.full(len(v), None, dtype=object) if w is None else w for v, w in read])
     rows = np.flatnonzero(texts != None)  # noqa: E711 - elementwise
     filled = len(rows) + int(np.isfinite(numbers).sum())
     if len(rows) > filled // 2:

@@ -9,7 +9,7 @@ A leap second is the last nanosecond of its minute: after everything in second 5
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
@@ -26,7 +26,10 @@ from auditor.loop import LogSource
 
 DAY = 86400 * SECOND
 _FIRST_YEAR, _LAST_YEAR = 1678, 2261  # what int64 nanoseconds since 1970 can hold in full
+_MONTH_STARTS = np.arange(f"{_FIRST_YEAR}-01", f"{_LAST_YEAR + 1}-02", dtype="datetime64[M]")
+_MONTH_STARTS = _MONTH_STARTS.astype("datetime64[D]").astype(np.int64)
 _LOOKED_AT = 100
+_ZONED_LENGTH, _LOCAL_LENGTH, _DATE_LENGTH = 20, 16, 10
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -108,26 +111,49 @@ def _typed(column: pa.ChunkedArray, table: RawTable) -> Stamps:
         raise LogError(
             Problem(what=what, where=table.label, found=str(error), do="correct or leave out the row")
         ) from None
+    stamps = _all_read(pc.fill_null(whole, 0).to_numpy(), local=zone is None)
     known = np.asarray(pc.is_valid(whole).to_numpy(), dtype=np.bool_)
-    n = len(known)
-    return Stamps(
-        nanoseconds=pc.fill_null(whole, 0).to_numpy(),
-        local=np.full(n, zone is None),
-        state=np.where(known, READ, UNREADABLE).astype(np.uint8),
-        leap=np.zeros(n, dtype=np.bool_),
-    )
+    return replace(stamps, state=np.where(known, READ, UNREADABLE).astype(np.uint8))
 
 
 def _text(column: pa.ChunkedArray, table: RawTable, source: LogSource) -> Stamps | Fields:
     if source.time_format is not None:
         return read_fields(column, (from_format(source.time_format),))
     if source.time_unit is None and not _looks_like_number(column):
-        return read_fields(column, FOUND_BY_LOOKING)
+        return _plain_iso(column) or read_fields(column, FOUND_BY_LOOKING)
     if source.time_unit is None:
         raise LogError(unit_unknown(column, table.label, table.decimal))
     whole, state = read_epochs(column, source.time_unit, table.decimal)
     nothing = np.zeros(len(whole), dtype=np.bool_)
     return Stamps(nanoseconds=whole, local=nothing, state=state, leap=nothing)
+
+
+def _plain_iso(column: pa.ChunkedArray) -> Stamps | None:
+    """Read a column that follows ISO 8601 plainly throughout; None when anything in it needs a closer look.
+
+    The lengths asked for keep out an hour without minutes, which the closer look does not take for a time either.
+    """
+    shortest, longest = pc.min_max(pc.binary_length(column)).as_py().values()
+    if column.null_count or shortest is None:
+        return None
+    zoned = column[0].as_py()[-6:].lstrip("0123456789:.")[:1] in ("Z", "+", "-") and longest > _DATE_LENGTH
+    if shortest < (_ZONED_LENGTH if zoned else _LOCAL_LENGTH) and not shortest == longest == _DATE_LENGTH:
+        return None
+    try:
+        whole = pc.cast(pc.cast(column, pa.timestamp("ns", "UTC" if zoned else None)), pa.int64())
+    except pa.ArrowInvalid:
+        return None
+    return _all_read(whole.to_numpy(), local=not zoned)
+
+
+def _all_read(whole: IntArray, local: bool) -> Stamps:
+    n = len(whole)
+    return Stamps(
+        nanoseconds=whole,
+        local=np.full(n, local),
+        state=np.full(n, READ, dtype=np.uint8),
+        leap=np.zeros(n, dtype=np.bool_),
+    )
 
 
 def _looks_like_number(column: pa.ChunkedArray) -> bool:
@@ -206,10 +232,9 @@ def _days_since_1970(
     year: npt.NDArray[np.int32], month: npt.NDArray[np.int32], day: npt.NDArray[np.int32]
 ) -> tuple[IntArray, BoolArray]:
     exists = (month >= 1) & (month <= 12) & (day >= 1) & (year >= _FIRST_YEAR) & (year <= _LAST_YEAR)
-    months = np.where(exists, (year.astype(np.int64) - 1970) * 12 + month - 1, 0)
-    first = months.astype("datetime64[M]").astype("datetime64[D]").astype(np.int64)
-    length = (months + 1).astype("datetime64[M]").astype("datetime64[D]").astype(np.int64) - first
-    exists &= day <= length
+    place = np.where(exists, (year - _FIRST_YEAR) * 12 + month - 1, 0)
+    first = _MONTH_STARTS[place]
+    exists &= day <= _MONTH_STARTS[place + 1] - first
     return first + np.where(exists, day - 1, 0), exists
 
 

@@ -14,14 +14,13 @@ from auditor.logs.findings.evidence import ABSENT, CONFLICT, EMPTY, OUTSIDE, SEN
 from auditor.logs.findings.exception_reported import archive_deadband
 from auditor.logs.findings.quantised import quantum
 from auditor.logs.findings.sentinel import sentinel_mask
-from auditor.logs.grid import Grid, any_at, last_at
+from auditor.logs.grid import Grid, any_at, comes_evenly, last_at
 from auditor.logs.log import Log
 from auditor.logs.order import Order
 from auditor.logs.runs import hold
 from auditor.loop import Signal
 
 _FEWEST_LEVELS = {"setpoint": 10}
-_SPARSE = 0.9
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -156,11 +155,10 @@ def _with_storage(trace: Trace, at_instants: FloatArray, grid: Grid) -> Trace:
 def stored_series(trace: Trace, at_instants: FloatArray, grid: Grid) -> FloatArray:
     """Return the values in the order an archive would have seen them.
 
-    Where rows are missing at more than a tenth of the instants the archive may have stored changes only, and the
-    values are held between rows; else the rows themselves tell, whatever the log's spacing.
+    Where the rows do not come evenly the archive may have stored changes only, and the values are held between rows;
+    else the rows themselves tell, whatever the log's spacing.
     """
-    rows = trace.values[np.isfinite(trace.values)]
-    expected = grid.count / grid.window
-    if trace.held or (not grid.coarse and len(rows) < _SPARSE * expected):
+    there = np.isfinite(trace.values)
+    if trace.held or not comes_evenly(grid.instant[there]):
         return hold(at_instants)
-    return rows
+    return trace.values[there]

@@ -55,18 +55,19 @@ def seconds(value: float | None) -> str:
 def decision_table(content: Content) -> Table:
     """The recommended setting, its runner-up, the present clock and the slowed-down one, side by side."""
     head = ("", *(_option_head(content, option) for option in content.options))
-    groups = (
+    groups: tuple[tuple[str, tuple[Row, ...]], ...] = (
         ("over the whole counted record", _rows(content, _WHOLE)),
-        ("on the first 60 %, where the setting was chosen", _part_rows(content, lambda option: option.first)),
-        ("on the rest, where it was judged", _part_rows(content, lambda option: option.rest)),
-        ("how sure", _rows(content, _SURE)),
+        ("on the first 60 %, where a setting is chosen", _part_rows(content, lambda option: option.first)),
+        ("on the rest, where it is judged", _part_rows(content, lambda option: option.rest)),
     )
+    if content.focus is not None:
+        groups += (("how sure", _rows(content, _SURE)),)
     return Table(head=head, numeric=frozenset(range(1, len(head))), groups=groups)
 
 
 def _option_head(content: Content, option: Option) -> str:
     if option.replay is None:
-        return f"{option.role}\nevery sample, {duration(content.audit.loop.period)}"
+        return f"{option.role}\nevery sample ({duration(content.audit.loop.period)})"
     setting = option.replay.setting
     name = "" if setting.rule == "periodic" else f"{rule_title(setting)}, "
     return f"{option.role} (#{option.index})\n{name}{settings_text(setting, content.audit.loop)}"

@@ -32,11 +32,31 @@ class TruthLoop:
 
 
 @numba.njit(cache=True)
+def _seen(C, x):
+    y = 0.0
+    for i in range(len(C)):
+        y += C[i] * x[i]
+    return y
+
+
+@numba.njit(cache=True)
+def _advance(A, x, spare):
+    """x ← A x; loops, because a call into BLAS costs more than these few products."""
+    for i in range(len(x)):
+        spare[i] = 0.0
+        for j in range(len(x)):
+            spare[i] += A[i, j] * x[j]
+    for i in range(len(x)):
+        x[i] = spare[i]
+
+
+@numba.njit(cache=True)
 def _run(A, B, C, delay, K, Ti, load, noise, r, delta):
     """The loop with send-on-delta on e (0: every sample); a silence is bridged with the error held."""
     N = len(r)
     n = len(B)
     x = np.zeros(n)
+    spare = np.zeros(n)
     command = np.zeros(N * FINE)
     y = np.zeros(N)
     u = np.zeros(N)
@@ -45,7 +65,7 @@ def _run(A, B, C, delay, K, Ti, load, noise, r, delta):
     since = HEARTBEAT
     integral = 0.0
     for k in range(N):
-        y[k] = C @ x + noise[k]
+        y[k] = _seen(C, x) + noise[k]
         e = r[k] - y[k]
         since += 1
         if k == 0 or abs(e - e_sent) > delta or since >= HEARTBEAT or delta == 0.0:
@@ -59,7 +79,9 @@ def _run(A, B, C, delay, K, Ti, load, noise, r, delta):
             now = k * FINE + i
             command[now] = u[k]
             late = command[now - delay] if now >= delay else 0.0
-            x = A @ x + B * (late + load[now])
+            _advance(A, x, spare)
+            for j in range(n):
+                x[j] += B[j] * (late + load[now])
     return y, u, updates
 
 
@@ -68,6 +90,7 @@ def _replay(A, B0, B1, C, delay, K, Ti, y, u, r, delta):
     """Deviation form around a record, with any sampled plant."""
     N = len(r)
     x = np.zeros(len(B0))
+    spare = np.zeros(len(B0))
     moved = np.zeros(N)
     e_sent = 0.0
     since = 0
@@ -76,7 +99,7 @@ def _replay(A, B0, B1, C, delay, K, Ti, y, u, r, delta):
     total = 0.0
     command = 0.0
     for k in range(N):
-        e = r[k] - y[k] - C @ x
+        e = r[k] - y[k] - _seen(C, x)
         since += 1
         if k == 0:
             integral = u[0] - K * e
@@ -93,7 +116,9 @@ def _replay(A, B0, B1, C, delay, K, Ti, y, u, r, delta):
         moved[k] = command - u[k]
         late = moved[k - delay] if k >= delay else 0.0
         early = moved[k - delay - 1] if k > delay else 0.0
-        x = A @ x + B0 * late + B1 * early
+        _advance(A, x, spare)
+        for j in range(len(x)):
+            x[j] += B0[j] * late + B1[j] * early
     return updates, np.sqrt(total / (N - SKIPPED))
 
 

@@ -11,7 +11,7 @@ import numpy as np
 from scipy.signal import lfilter
 
 from auditor.logs.log import Log
-from auditor.loop import Actuator, Exclusion, Loop, LogSource, Mode, Signal, Signals
+from auditor.loop import Actuator, Exclusion, LogSource, Loop, Mode, Signal, Signals
 
 START = 1_740_787_200_000_000_000  # 2025-03-01T00:00:00Z
 PERIOD = 60.0

@@ -54,12 +54,13 @@ def archive_deadband(values: FloatArray, step: float | None) -> float | None:
 
 
 def _by_the_clock(moved: IntArray) -> BoolArray:
-    """Return True for the changes stored after the longest time without one, where many are."""
+    """Return True for the changes stored after the longest time without one, where many are, and for the first."""
     since = np.diff(moved, prepend=moved[0])
-    longest = since == since.max()
-    if since.max() > 2 and longest.mean() > _REGULAR_STORES:
-        return np.asarray(longest)
-    return np.zeros(len(moved), dtype=np.bool_)
+    longest: BoolArray = since == since.max()
+    if since.max() <= 2 or longest.mean() <= _REGULAR_STORES:
+        longest = np.zeros(len(moved), dtype=np.bool_)
+    longest[0] = True
+    return longest
 
 
 def find(seen: Evidence) -> list[Finding]:

@@ -155,8 +155,9 @@ def _draw_curve(axes: Axes, curve: Curve, color: str, marker: str) -> None:
     if curve.clock:
         return
     axes.plot(x, y, linestyle="", marker=marker, markersize=4 if curve.focus else 3, color=color, zorder=4)
-    axes.vlines(x[edge], *curve.error_ends[edge].T, color=color, linewidth=0.8, zorder=3)
-    axes.hlines(y[edge], *curve.rate_ends[edge].T, color=color, linewidth=0.8, zorder=3)
+    whisker = {"color": color, "linewidth": 1.0 if curve.focus else 0.7, "alpha": 1.0 if curve.focus else 0.4}
+    axes.vlines(x[edge], *curve.error_ends[edge].T, zorder=2, **whisker)
+    axes.hlines(y[edge], *curve.rate_ends[edge].T, zorder=2, **whisker)
 
 
 def _name(axes: Axes, curve: Curve, color: str) -> Label | None:
