@@ -38,7 +38,7 @@ if TYPE_CHECKING:
     from auditor.replay import Replay as Replay
     from auditor.report.write import write_audit as write_audit
 
-__all__ = ["__version__", *sorted(_HOME)]  # noqa: PLE0604
+__all__ = ["__version__", *sorted(_HOME)]
 
 
 class _Public(ModuleType):

@@ -127,9 +127,7 @@ def audit(
     return _decided(loop, bench, model, parts, replayed, provenance)
 
 
-def _decided(
-    loop: Loop, bench: Bench, model: Model, parts: Parts, replayed: Replayed, provenance: Provenance
-) -> Audit:
+def _decided(loop: Loop, bench: Bench, model: Model, parts: Parts, replayed: Replayed, provenance: Provenance) -> Audit:
     record, controller = bench.record, model.controller
     base, first, rest = (baseline(record, controller, loop.limits, s) for s in (parts.whole, parts.first, parts.rest))
     case = Case(

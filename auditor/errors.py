@@ -56,9 +56,7 @@ class AuditorError(Exception):
     exit_code = 1
 
     def __init__(self, *problems: Problem | str) -> None:
-        self.problems: tuple[Problem, ...] = tuple(
-            p if isinstance(p, Problem) else Problem(what=p) for p in problems
-        )
+        self.problems: tuple[Problem, ...] = tuple(p if isinstance(p, Problem) else Problem(what=p) for p in problems)
         super().__init__("\n".join(str(p) for p in self.problems))
 
 

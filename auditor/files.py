@@ -35,5 +35,10 @@ def write_bytes(path: Path, body: bytes, *, replace: bool = True) -> None:
         os.replace(name, path)
     except OSError as error:
         raise OutputError(
-            Problem(what="the result cannot be written", where=str(path), found=str(error), do="choose another place with --out")
+            Problem(
+                what="the result cannot be written",
+                where=str(path),
+                found=str(error),
+                do="choose another place with --out",
+            )
         ) from error

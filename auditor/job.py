@@ -62,9 +62,7 @@ def replay_all(
     )
 
 
-def danger_case(
-    bench: Bench, loop: Loop, model: Model, parts: Parts, setting: Setting, lanes: Lanes
-) -> DangerCase:
+def danger_case(bench: Bench, loop: Loop, model: Model, parts: Parts, setting: Setting, lanes: Lanes) -> DangerCase:
     """What the detectors look at: the likely plants only, on counted samples."""
     return DangerCase(
         record=bench.record,
@@ -147,6 +145,7 @@ def all_warm_up(record: Record, model: Model) -> Problem:
     return Problem(
         what="no span of the log is long enough to be counted",
         found=f"the longest span is {duration(longest)}",
-        expected=f"twice the warm-up: ten closed-loop time constants ({duration(10 * model.tau_cl_s)}) or the longest silence",
+        expected=f"twice the warm-up: ten closed-loop time constants ({duration(10 * model.tau_cl_s)}) or the longest "
+        "silence",
         do="give a log with a longer stretch in automatic operation, or state a shorter max_silence",
     )

@@ -51,7 +51,9 @@ def scale_of(record: Record, controller: Pid, tau_cl_s: float) -> Scale:
     return Scale(error=error, tau_cl_s=tau_cl_s, gain=abs(controller.gain), floor=floor)
 
 
-def make_settings(loop: Loop, record: Record, controller: Pid, tau_cl_s: float, *, quick: bool = False) -> list[Setting]:
+def make_settings(
+    loop: Loop, record: Record, controller: Pid, tau_cl_s: float, *, quick: bool = False
+) -> list[Setting]:
     """Return the settings to replay: those of the loop file, or the standard panel.
 
     Raises

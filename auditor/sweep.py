@@ -13,11 +13,11 @@ from auditor.arrays import FloatArray
 from auditor.logs.record import Record, Span
 from auditor.loop import Limits, Loop
 from auditor.progress import Progress, silent
-from auditor.replay.refusals import refusal, trust_of_width
 from auditor.replay.bench import Bench
 from auditor.replay.counted import by_month, counted_spans, split
 from auditor.replay.lanes import Lanes, diverged, replay_lanes
 from auditor.replay.measuring import answer_interval, log_floor, middle, per_lane, totals
+from auditor.replay.refusals import refusal, trust_of_width
 from auditor.replay.types import Replay, Setting
 
 _T = TypeVar("_T")
@@ -145,9 +145,7 @@ def _measure(bench: Bench, limits: Limits, lanes: Lanes, spans: Sequence[Span]) 
     return per_lane(total, bench.record, limits)
 
 
-def _intervals(
-    lanes: dict[str, FloatArray], draws: int, floor: dict[str, float]
-) -> dict[str, tuple[float, float]]:
+def _intervals(lanes: dict[str, FloatArray], draws: int, floor: dict[str, float]) -> dict[str, tuple[float, float]]:
     return {name: answer_interval(lanes[name], draws, floor[kind]) for name, kind in INTERVALS.items()}
 
 

@@ -15,10 +15,12 @@ from auditor.text import number, percent
 
 CAUTIONS = (
     "An offline replay on an identified model is not a proof of stability.",
-    "Safety functions stay on their fixed schedule and out of this; for safety instrumented functions IEC 61511 applies.",
+    "Safety functions stay on their fixed schedule and out of this; for safety instrumented functions IEC 61511 "
+    "applies.",
     "A change of update scheme goes through the site's management of change and a licensed control engineer, under the "
     "codes that apply there.",
-    "Run a pilot first, with the watchdog on: no update for longer than the longest silence brings the fixed clock back.",
+    "Run a pilot first, with the watchdog on: no update for longer than the longest silence brings the fixed clock "
+    "back.",
     "The replay takes the disturbances as they came. Where the world reacts to the measurement (weirs, "
     "pressure-dependent demand) it does so here only through the model.",
 )
@@ -163,9 +165,7 @@ def _part(replay: Replay, part: str) -> tuple[Measures, dict[str, tuple[float, f
 def candidates(case: Case) -> list[int]:
     """Event rules that the log can answer."""
     return [
-        i
-        for i, r in enumerate(case.replays)
-        if r.answerable and r.trust != "none" and r.setting.rule != "periodic"
+        i for i, r in enumerate(case.replays) if r.answerable and r.trust != "none" and r.setting.rule != "periodic"
     ]
 
 

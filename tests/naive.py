@@ -109,8 +109,10 @@ class Controller:
             I = self.I + self.kih * ((m - 1.0) * bridge + b)
         fixed = c.gain * (e + (c.setpoint_weight - 1.0) * r) + D
         v = fixed + I
-        if c.anti_windup == "freeze" and self.kih != 0.0 and (
-            (v + rho > c.high and self.I < I) or (v + rho < c.low and self.I > I)
+        if (
+            c.anti_windup == "freeze"
+            and self.kih != 0.0
+            and ((v + rho > c.high and self.I < I) or (v + rho < c.low and self.I > I))
         ):
             I = self.I
             v = fixed + I
@@ -201,8 +203,27 @@ class Device:
         self.x, self.unit = x, unit
 
 
-def replay(y, r, u, rho, plant, controller, rule, values, h, *, link="sensor", signal="error", between="hold",
-           min_gap=0, max_silence=HUGE, y_step=0.0, u_step=0.0, r_step=0.0, device=None):
+def replay(
+    y,
+    r,
+    u,
+    rho,
+    plant,
+    controller,
+    rule,
+    values,
+    h,
+    *,
+    link="sensor",
+    signal="error",
+    between="hold",
+    min_gap=0,
+    max_silence=HUGE,
+    y_step=0.0,
+    u_step=0.0,
+    r_step=0.0,
+    device=None,
+):
     """Replay one span; returns lists (y, u, updated).
 
     plant : (A, B0, B1, C, d) as nested lists; device : (A, B0, B1, C, d, floor) or None; guards in samples.
@@ -213,6 +234,7 @@ def replay(y, r, u, rho, plant, controller, rule, values, h, *, link="sensor", s
     model = Device(*device, u0=u[0]) if device else None
     since_run, latched, request = 0, False, False
     out_y, out_u, out_sent = [], [], []
+    last, x_sent = 0, 0.0
     for k in range(len(y)):
         away = p.output()
         if y_step > 0:

@@ -14,7 +14,7 @@ from auditor.draft import Draft, draft
 from auditor.draft.clock import period_text
 from auditor.draft.dress import look_at
 from auditor.draft.ranges import actuator_range, constant_setpoint
-from auditor.draft.roles import find_roles
+from auditor.draft.roles import find_roles, name_weight
 from auditor.draft.words import is_unit, names, unit_of
 from auditor.errors import LogError, LoopFileError
 from auditor.loop import Loop
@@ -463,16 +463,32 @@ def test_unit_of(header, unit):
 @pytest.mark.parametrize(
     ("header", "role", "word"),
     [
-        ("DryerTemperatureSP", "setpoint", "sp"),
-        ("Stellgröße", "actuator", "stellgrosse"),
-        ("Consigne de niveau", "setpoint", "consigne"),
-        ("Drucksollwert", "setpoint", "drucksollwert"),
+        ("DryerTemperatureSP", "setpoint", "SP"),
+        ("Stellgröße", "actuator", "Stellgröße"),
+        ("Consigne de niveau", "setpoint", "Consigne"),
+        ("Drucksollwert", "setpoint", "Drucksollwert"),
         ("spare", "setpoint", None),
-        ("Klepstand 3", "actuator", "klepstand"),
+        ("Klepstand 3", "actuator", "Klepstand"),
     ],
 )
 def test_names(header, role, word):
     assert names(header, role) == word
+
+
+@pytest.mark.parametrize(
+    ("header", "role", "weight"),
+    [
+        ("pump pressure", "measurement", 0.5),
+        ("pump pressure", "actuator", 0.0),
+        ("pump speed", "actuator", 1.0),
+        ("Füllstand [m]", "measurement", 0.5),
+        ("level setpoint", "measurement", -0.5),
+        ("valve position SP", "setpoint", 1.0),
+        ("tag 17", "actuator", 0.0),
+    ],
+)
+def test_name_weight(header, role, weight):
+    assert name_weight(header, role) == weight
 
 
 def test_is_unit():

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 
@@ -54,4 +56,4 @@ def test_divisors_reach_the_fewest_updates() -> None:
     every = divisors_for(fewest=20.0, samples=1000)
     assert every[:8] == (1, 2, 3, 4, 5, 6, 7, 8)
     assert every[-1] >= 51
-    assert all(b > a for a, b in zip(every, every[1:], strict=False))
+    assert all(b > a for a, b in pairwise(every))

@@ -47,9 +47,7 @@ def run_audit(
     folder = out if out is not None else Path(f"audit-{safe_name(loop.name)}")
     given = read_model(model) if model is not None else None
     with progress_on_stderr(quiet=json) as progress:
-        result = audit(
-            loop, model=given, seed=seed, quick=quick, jobs=jobs, command=_command_line(), progress=progress
-        )
+        result = audit(loop, model=given, seed=seed, quick=quick, jobs=jobs, command=_command_line(), progress=progress)
         written = write_audit(result, folder, model_text, progress)
     _say(result, folder, written, json)
     return 0 if result.answerable else CANNOT_ANSWER

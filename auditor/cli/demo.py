@@ -19,7 +19,9 @@ def register(app: typer.Typer) -> None:
 
     @app.command("demo", help="Write a bundled sample loop (log and loop file) to a folder and audit it.")
     def command(
-        name: Annotated[str | None, typer.Argument(metavar="[NAME]", help="A sample; lists them and runs the first when left out.")] = None,
+        name: Annotated[
+            str | None, typer.Argument(metavar="[NAME]", help="A sample; lists them and runs the first when left out.")
+        ] = None,
         out: Out = None,
     ) -> int:
         from auditor.cli.audit import run_audit
@@ -51,7 +53,10 @@ def listing(known: dict[str, Path]) -> str:
     """Names and descriptions of the samples."""
     from auditor.cli.screen import table
 
-    rows = [[name, str(tomllib.loads(path.read_text("utf-8"))["loop"].get("description", ""))] for name, path in known.items()]
+    rows = [
+        [name, str(tomllib.loads(path.read_text("utf-8"))["loop"].get("description", ""))]
+        for name, path in known.items()
+    ]
     return table(["sample", "what it is (invented data)"], rows) + "\n"
 
 

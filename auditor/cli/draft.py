@@ -14,7 +14,10 @@ def register(app: typer.Typer) -> None:
     @app.command("draft", help="Look at an unknown log and write a commented loop file to start from.")
     def command(
         log: Annotated[Path, typer.Argument(metavar="LOG", help="CSV or Parquet file.")],
-        out: Annotated[Path | None, typer.Option("--out", metavar="FILE", help="Loop file to write; <log name>.toml when left out.")] = None,
+        out: Annotated[
+            Path | None,
+            typer.Option("--out", metavar="FILE", help="Loop file to write; <log name>.toml when left out."),
+        ] = None,
     ) -> None:
         from auditor.draft import draft
         from auditor.files import write_text

@@ -17,8 +17,12 @@ def register(app: typer.Typer) -> None:
     @app.command("identify", help="Fit controller and plant, print and plot the validation.")
     def command(
         loopfile: LoopFile,
-        save: Annotated[Path | None, typer.Option("--save", metavar="FILE", help="Save the model for `replay` and `audit`.")] = None,
-        plot: Annotated[Path | None, typer.Option("--plot", metavar="FILE", help="Step response of the likely plants, PNG or SVG.")] = None,
+        save: Annotated[
+            Path | None, typer.Option("--save", metavar="FILE", help="Save the model for `replay` and `audit`.")
+        ] = None,
+        plot: Annotated[
+            Path | None, typer.Option("--plot", metavar="FILE", help="Step response of the likely plants, PNG or SVG.")
+        ] = None,
         jobs: Jobs = JOBS,
         seed: Seed = 1,
         quick: Quick = False,

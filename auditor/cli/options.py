@@ -8,8 +8,12 @@ from typing import Annotated
 
 import typer
 
-LoopFile = Annotated[Path, typer.Argument(metavar="LOOPFILE", help="Loop file (TOML) that describes the loop and its log.")]
-Out = Annotated[Path | None, typer.Option("--out", metavar="DIR", help="Folder for results; ./audit-<loop name> when left out.")]
+LoopFile = Annotated[
+    Path, typer.Argument(metavar="LOOPFILE", help="Loop file (TOML) that describes the loop and its log.")
+]
+Out = Annotated[
+    Path | None, typer.Option("--out", metavar="DIR", help="Folder for results; ./audit-<loop name> when left out.")
+]
 Json = Annotated[bool, typer.Option("--json", help="Print the result as JSON on stdout and nothing else.")]
 Seed = Annotated[int, typer.Option("--seed", min=0, help="Same input and same seed give the same result.")]
 Quick = Annotated[bool, typer.Option("--quick", help="Fewer draws and a coarser panel: a first look.")]

@@ -19,9 +19,16 @@ def register(app: typer.Typer) -> None:
     def command(
         loopfile: LoopFile,
         rule: Annotated[str, typer.Option("--rule", metavar="NAME", help="A rule of `auditor rules`.")],
-        given: Annotated[list[str] | None, typer.Option("--set", metavar="KEY=VALUE", help="A setting of the rule; repeat for more.")] = None,
-        link: Annotated[str | None, typer.Option("--link", help="sensor or actuator; the rule's own when left out.")] = None,
-        series: Annotated[Path | None, typer.Option("--series", metavar="FILE", help="Write the replayed signals as .parquet or .csv.")] = None,
+        given: Annotated[
+            list[str] | None, typer.Option("--set", metavar="KEY=VALUE", help="A setting of the rule; repeat for more.")
+        ] = None,
+        link: Annotated[
+            str | None, typer.Option("--link", help="sensor or actuator; the rule's own when left out.")
+        ] = None,
+        series: Annotated[
+            Path | None,
+            typer.Option("--series", metavar="FILE", help="Write the replayed signals as .parquet or .csv."),
+        ] = None,
         model: ModelFile = None,
         seed: Seed = 1,
         quick: Quick = False,
@@ -44,7 +51,11 @@ def register(app: typer.Typer) -> None:
         with progress_on_stderr(quiet=json) as progress:
             progress("reading the log", 0.0)
             record = read_record(loop)
-            known = read_model(model) if model else identify(record, loop, seed=seed, quick=quick, workers=JOBS, progress=progress)
+            known = (
+                read_model(model)
+                if model
+                else identify(record, loop, seed=seed, quick=quick, workers=JOBS, progress=progress)
+            )
             result, flags = replay_setting(record, known, loop, setting, jobs=JOBS, progress=progress)
         if series is not None and result.series is not None:
             write_bytes(series, series_bytes(record, result.series, series.suffix))
@@ -77,7 +88,11 @@ def parse(pairs: list[str]) -> dict[str, float]:
             values[key] = value
         except ValueError:
             problems.append(
-                Problem(what="a setting cannot be read", found=pair, expected="KEY=VALUE, a number or a duration such as 15min")
+                Problem(
+                    what="a setting cannot be read",
+                    found=pair,
+                    expected="KEY=VALUE, a number or a duration such as 15min",
+                )
             )
     if problems:
         raise CommandError(*problems)

@@ -65,7 +65,16 @@ def _baseline_row(audit: Audit) -> list[str]:
     b = audit.baseline
     if b is None:
         return ["(record)", "", "–", "–", "–", "", "", ""]
-    return ["(record)", f"every {duration(audit.loop.period)}", number(b.updates_per_hour), "0 %", number(b.rms_error), "", "", ""]
+    return [
+        "(record)",
+        f"every {duration(audit.loop.period)}",
+        number(b.updates_per_hour),
+        "0 %",
+        number(b.rms_error),
+        "",
+        "",
+        "",
+    ]
 
 
 def _row(audit: Audit, index: int, mark: str = "") -> list[str]:
@@ -95,8 +104,14 @@ def replay_lines(replay: Replay, loop: Loop) -> str:
         ("RMS error", f"{number(m.rms_error)} {unit} (90 % {_pair(replay, 'rms_error')})"),
         ("largest error", f"{number(m.max_abs_error)} {unit} (90 % {_pair(replay, 'max_abs_error')})"),
         ("gaps", " / ".join("–" if v is None else duration(v) for v in (m.min_gap_s, m.median_gap_s, m.max_gap_s))),
-        ("model left out", f"{number(replay.naive_updates)} updates, RMS error {number(replay.naive_rms_error)} {unit}"),
-        ("against the clock", f"{replay.against_periodic} (same or fewer updates: {number(replay.periodic_rms_error)} {unit})"),
+        (
+            "model left out",
+            f"{number(replay.naive_updates)} updates, RMS error {number(replay.naive_rms_error)} {unit}",
+        ),
+        (
+            "against the clock",
+            f"{replay.against_periodic} (same or fewer updates: {number(replay.periodic_rms_error)} {unit})",
+        ),
         ("trust", replay.trust if replay.answerable else f"none: {replay.refusal}"),
     ]
     return "\n".join(f"{name:<18}{text}" for name, text in lines)
@@ -163,7 +178,11 @@ def model_lines(model: Model, loop: Loop) -> str:
         f"null replay    {percent(model.null_replay, 2)} of the error's deviation"
         + (", the rest is injected" if model.injected else ""),
         f"plant          {p.structure}, dead time {_range(model, 'delay_s')}, "
-        + (f"gain {number(p.gain)} {y}/{u}" if p.gain is not None else f"integrating, {number(p.gain_per_s)} {y}/({u}·s)"),
+        + (
+            f"gain {number(p.gain)} {y}/{u}"
+            if p.gain is not None
+            else f"integrating, {number(p.gain_per_s)} {y}/({u}·s)"
+        ),
         f"lags           {', '.join(_time(t) for t in p.time_constants_s) or '–'}",
         f"likely plants  {len(model.plants)} of {model.modes} kind(s), {model.dropped} dropped"
         + (f"; gain {number(min(gains))}…{number(max(gains))}" if gains else ""),

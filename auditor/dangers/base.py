@@ -142,6 +142,12 @@ class Stretch:
         The same for each of the detector's clauses.
     period : float
         [s]
+    lanes : ndarray of bool, shape (L,)
+        True for the likely plants under which it appears.
+    share : float
+        Share of the likely plants under which it appears.
+    duration_s : float
+        Time in danger inside the stretch, median over the likely plants under which it appears [s].
     """
 
     start: int
@@ -149,21 +155,16 @@ class Stretch:
     mask: BoolArray
     parts: Mapping[str, BoolArray]
     period: float
+    lanes: BoolArray = field(init=False)
+    share: float = field(init=False)
+    duration_s: float = field(init=False)
 
-    @property
-    def lanes(self) -> BoolArray:
-        """Lanes under which it appears, shape (L,)."""
-        return np.asarray(self.mask.any(axis=0))
-
-    @property
-    def share(self) -> float:
-        """Share of the likely plants under which it appears."""
-        return float(self.lanes.mean())
-
-    @property
-    def duration_s(self) -> float:
-        """Time in danger inside the stretch, median over the lanes under which it appears [s]."""
-        return float(np.median(self.mask.sum(axis=0)[self.lanes])) * self.period
+    def __post_init__(self) -> None:
+        samples = self.mask.sum(axis=0)
+        lanes = samples > 0
+        object.__setattr__(self, "lanes", lanes)
+        object.__setattr__(self, "share", float(lanes.mean()))
+        object.__setattr__(self, "duration_s", float(np.median(samples[lanes])) * self.period)
 
     def rows(self, array: FloatArray) -> FloatArray:
         """Rows of `array` (N, …) inside the stretch."""

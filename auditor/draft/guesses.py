@@ -197,11 +197,11 @@ def _actuator(found: Survey, roles: Roles, columns: Sequence[Column]) -> Iterato
     )
     yield from _unit("actuator", u)
     limits = actuator_range(found.grid[:, roles.actuator], u.unit)
-    for key, value in (("low", limits.low), ("high", limits.high)):
-        if value is not None:
-            yield Guess(
-                key=f"signals.actuator.{key}", value=plain_number(value), reason=limits.reason, sure=limits.sure
-            )
+    if limits.low is not None:
+        yield Guess(key="signals.actuator.low", value=plain_number(limits.low), reason=limits.reason, sure=limits.sure)
+    if limits.high is not None:
+        reason = limits.reason if limits.low is None else "see low"
+        yield Guess(key="signals.actuator.high", value=plain_number(limits.high), reason=reason, sure=limits.sure)
 
 
 def mode_guesses(found: Survey) -> Iterator[Guess]:

@@ -181,6 +181,8 @@ def _without_first_lines(text: str, lines: int) -> str:
     start = 0
     for _ in range(lines):
         start = text.find("\n", start) + 1
+        if not start:
+            return ""
     return text[start:]
 
 

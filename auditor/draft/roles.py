@@ -7,8 +7,9 @@ explains the log, the more the names count.
 
 from __future__ import annotations
 
+import functools
 import itertools
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -147,32 +148,34 @@ def _named(headers: Sequence[str], u: int, y: int, r: int | None) -> float:
     return score + (name_weight(headers[r], "setpoint") if r is not None else 0.0)
 
 
+@functools.cache
 def name_weight(header: str, role: str) -> float:
-    """Return what a name says about a role: 1 for it, less for a quantity's name, below 0 for another role."""
-    speaks = {known for known, _ in _speaks(header)}
-    if role == "measurement" and "measurement" not in speaks and "quantity" in speaks:
-        return 0.5 if not speaks & {"setpoint", "actuator"} else -0.5
-    if role in speaks:
-        return 1.0 if role == "setpoint" or "setpoint" not in speaks else -0.5
-    return -0.5 if speaks & {"setpoint", "actuator", "measurement"} else 0.0
+    """Return what a name says about a role: up to 1 for it, below 0 for another one, 0 for nothing."""
+    speaks = _speaks(header)
+    if "setpoint" in speaks:
+        return 1.0 if role == "setpoint" else -0.5
+    if role == "measurement" and "actuator" not in speaks:
+        return 1.0 if "measurement" in speaks else 0.5 if "quantity" in speaks else -0.5 if "device" in speaks else 0.0
+    if role == "actuator" and "measurement" not in speaks:
+        return 1.0 if "actuator" in speaks else 0.7 if "device" in speaks and "quantity" not in speaks else 0.0
+    return -0.5 if speaks.keys() & {"actuator", "measurement"} else 0.0
 
 
-def _speaks(header: str) -> Iterator[tuple[str, str]]:
-    for role in ("setpoint", "actuator", "measurement", "quantity"):
-        word = names(header, role)
-        if word is not None:
-            yield role, word
+def _speaks(header: str) -> dict[str, str]:
+    """Return the word that speaks for each role."""
+    roles = ("setpoint", "actuator", "device", "measurement", "quantity")
+    return {role: word for role in roles if (word := names(header, role)) is not None}
 
 
 def word_for(header: str, role: str) -> str | None:
     """Return the word in a name that speaks for `role`, None when it says nothing or speaks for another role."""
     if name_weight(header, role) <= 0:
         return None
-    found = dict(_speaks(header))
-    return found.get(role) or (found.get("quantity") if role == "measurement" else None)
+    found = _speaks(header)
+    return found.get(role) or found.get({"measurement": "quantity", "actuator": "device"}.get(role, role))
 
 
 def strongest(headers: Sequence[str], filled: Sequence[float]) -> list[int]:
     """Return the candidates to look at when there are too many: those whose names say something, then the fullest."""
-    order = sorted(range(len(headers)), key=lambda n: (not dict(_speaks(headers[n])), -filled[n], n))
+    order = sorted(range(len(headers)), key=lambda n: (not _speaks(headers[n]), -filled[n], n))
     return sorted(order[:MOST_SIGNALS])

@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 import datetime
+import functools
 import itertools
 import re
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 import pandas as pd
@@ -48,11 +49,24 @@ def formats_for(samples: Sequence[str]) -> list[str]:
         return [ISO]
     if samples and all(_COMPACT.fullmatch(sample) for sample in samples):
         return ["%Y%m%d%H%M%S" if len(samples[0]) == 14 else "%Y%m%d%H%M"]
-    if not samples or not re.search(r"\d\D+\d", samples[0]):
-        return []
-    ways = itertools.product(_DATES, _BETWEEN, _TIMES, _ZONES)
-    found = ["".join(way) for way in ways if _follows(samples[0], "".join(way))]
+    found = _ways_by_shape().get(_shape(samples[0]), ()) if samples else ()
     return [way for way in found if all(_follows(sample, way) for sample in samples)]
+
+
+@functools.cache
+def _ways_by_shape() -> Mapping[str, Sequence[str]]:
+    """Every way of writing, by the shape of what it writes: trying all of them on every column would take seconds."""
+    ways: dict[str, list[str]] = {}
+    for date, between, clock, zone in itertools.product(_DATES, _BETWEEN, _TIMES, _ZONES):
+        way = f"{date}{between}{clock}{zone}"
+        for written in ("+0100", "-0100", "+01:00", "-01:00", "Z") if zone else ("",):
+            example = datetime.datetime(2025, 3, 1).strftime(way.removesuffix("%z")) + written
+            ways.setdefault(_shape(example), []).append(way)
+    return ways
+
+
+def _shape(text: str) -> str:
+    return re.sub(r"[A-Za-z]+", "a", re.sub(r"\d+", "9", text))
 
 
 def _follows(sample: str, way: str) -> bool:

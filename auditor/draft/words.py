@@ -32,11 +32,15 @@ WORDS: Mapping[str, Sequence[str]] = MappingProxyType(
             "temperatur vorlauf sauerstoff peil waterstand debiet druk temperatuur zuurstof debit pression oxygene "
             "nivel caudal presion temperatura oxigeno"
         ),
+        # What a device does speaks for the actuator; a device alone does unless a quantity stands beside it.
         "actuator": _words(
-            "actuator valve gate output out op co mv cv position pos speed opening drive pump control manipulated "
-            "stellgrosse stellwert stellung ventil klappe schieber ausgang drehzahl pumpe reglerausgang klep schuif "
-            "uitgang uitsturing stand toerental pomp regelklep stuursignaal vanne sortie commande ouverture vitesse "
-            "pompe position valvula salida compuerta velocidad bomba apertura mando u"
+            "actuator output out op co mv cv position pos speed opening drive control manipulated stellgrosse "
+            "stellwert stellung ausgang drehzahl reglerausgang uitgang uitsturing klepstand schuifstand toerental stuursignaal "
+            "sortie commande ouverture vitesse salida velocidad apertura mando u"
+        ),
+        "device": _words(
+            "valve gate pump damper blower ventil klappe schieber pumpe geblase klep schuif pomp regelklep vanne pompe "
+            "clapet valvula compuerta bomba"
         ),
         "mode": _words(
             "mode auto automatic manual state status betriebsart modus hand automatik bedrijfsmodus regime "
@@ -73,8 +77,11 @@ _EDGE = re.compile(r"(?<=[a-zà-ÿ])(?=[A-Z])|(?<=[A-Z])(?=[A-Z][a-zà-ÿ])|[^A-
 
 def tokens(name: str) -> list[str]:
     """Return the words of a header in lower case and without accents: ``LevelSP_pool7`` → level, sp, pool7."""
-    parts = [part for part in _EDGE.split(name) if part]
-    return [plain(part) for part in parts]
+    return [plain(part) for part in _parts(name)]
+
+
+def _parts(name: str) -> list[str]:
+    return [part for part in _EDGE.split(name) if part]
 
 
 def plain(word: str) -> str:
@@ -87,16 +94,16 @@ def names(header: str, role: str) -> str | None:
     """Return the word of `header` that speaks for `role` (a key of `WORDS`), None when there is none.
 
     A short word must stand alone; a stem of four letters or more may also begin or end a longer word, as German and
-    Dutch put words together. The last matching word counts most in a name, so it is looked at first.
+    Dutch put words together.
     """
-    known = WORDS[role]
-    for token in reversed(tokens(header)):
-        bare = token.rstrip("0123456789") or token
-        if token in known or bare in known:
-            return token
-        if any(len(word) >= 4 and (bare.startswith(word) or bare.endswith(word)) for word in known):
-            return token
-    return None
+    return next((part for part in reversed(_parts(header)) if _speaks_for(plain(part), WORDS[role])), None)
+
+
+def _speaks_for(token: str, known: Sequence[str]) -> bool:
+    bare = token.rstrip("0123456789") or token
+    if token in known or bare in known:
+        return True
+    return any(len(word) >= 4 and (bare.startswith(word) or bare.endswith(word)) for word in known)
 
 
 def unit_of(header: str) -> str:

@@ -19,7 +19,6 @@ from auditor.identify import thresholds
 from auditor.identify.regression import (
     Design,
     Fit,
-    Signals,
     Terms,
     difference_design,
     difference_rows,
@@ -27,6 +26,7 @@ from auditor.identify.regression import (
     level_rows,
     solve,
 )
+from auditor.identify.signals import Signals, window
 from auditor.logs.findings.base import Finding
 from auditor.logs.record import Record, Span
 
@@ -65,8 +65,9 @@ def shift_actuator(record: Record, skew: int) -> Record:
     kept = slice(max(0, -skew), len(record) - max(0, skew))
     source = slice(max(0, skew), len(record) - max(0, -skew))
     u[kept], recorded[kept] = record.u[source], record.valid[source]
-    spans = (Span(span.start + max(0, -skew), span.stop - max(0, skew)) for span in record.spans)
-    shifted = replace(record, u=u, valid=record.valid & recorded, spans=tuple(s for s in spans if len(s) > 1))
+    ends = ((span.start + max(0, -skew), span.stop - max(0, skew)) for span in record.spans)
+    spans = tuple(Span(start, stop) for start, stop in ends if stop - start > 1)
+    shifted = replace(record, u=u, valid=record.valid & recorded, spans=spans)
     return shifted.with_findings(
         Finding(
             kind="skew",
@@ -108,24 +109,26 @@ def best_match(signals: Signals, *, saturates: bool, quantum: float = 0.0) -> Ma
     residuals where the actuator saturates or rare large moves decide the fit: conditional integration, for one, stops
     the integral on samples where the actuator is not at its limit.
     """
-    match = _search(signals, robust=False, levels=False)
+    part = window(signals, thresholds.SCAN_SAMPLES)
+    match = _search(signals, part, robust=False, levels=False)
     if match is None or match.fit.exact:
         return match
     robust = saturates or _heavy_tailed(signals, match)
     if robust:
-        match = _search(signals, robust=True, levels=False) or match
+        match = _search(signals, part, robust=True, levels=False) or match
     if match.fit.exact or not (quantum > 0 or _noise_on_level(match.fit)):
         return match
-    levelled = _search(signals, robust=robust, levels=True)
+    levelled = _search(signals, part, robust=robust, levels=True)
     return levelled if levelled is not None and _levels_hold(levelled, match, quantum) else match
 
 
-def _search(signals: Signals, *, robust: bool, levels: bool) -> Match | None:
+def _search(signals: Signals, part: Signals, *, robust: bool, levels: bool) -> Match | None:
+    """Find lag and kind on a part of the record, the coefficients on all of it."""
     best: Match | None = None
-    for terms in _kinds(setpoint_moves(signals), len(signals.w)):
+    for terms in _kinds(setpoint_moves(part), len(part.w)):
         if best is not None and best.fit.exact:
             break
-        candidate = _best_lag(signals, terms, robust=robust, levels=levels)
+        candidate = _best_lag(part, terms, robust=robust, levels=levels)
         if candidate is not None and (best is None or _clearly_better(candidate, best)):
             best = candidate
     if best is None:
@@ -168,8 +171,7 @@ def _best_lag(signals: Signals, terms: Terms, *, robust: bool, levels: bool) -> 
 
 
 def _plausible(fit: Fit, terms: Terms, longest: int) -> bool:
-    """Refuse coefficients that are no controller: parts that work against each other, an integral that takes longer
-    than the longest span."""
+    """Refuse what is no controller: parts that work against each other, an integral slower than the log."""
     gain, *rest = fit.coefficients
     if terms.integral:
         # The forward form's gain K + Ki is the largest of the three: a pure integral controller has only that one.

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from itertools import pairwise
 
 import numpy as np
@@ -14,9 +14,9 @@ from auditor.controllers.pid import INTEGRALS, Pid
 from auditor.identify import thresholds
 from auditor.identify.alignment import lay_out, shift_actuator, skew_words
 from auditor.identify.gains import coefficients_of, terms_of
-from auditor.identify.limits import saturates, stuck_at_extreme
+from auditor.identify.limits import at_limit, longest_run, stuck_at_extreme
 from auditor.identify.plant import Plant
-from auditor.identify.regression import Signals, read_signals, solve
+from auditor.identify.regression import solve
 from auditor.identify.residual import (
     controller_residual,
     explained_by_disturbances,
@@ -24,11 +24,15 @@ from auditor.identify.residual import (
     null_replay,
     within,
 )
+from auditor.identify.signals import Signals, read_signals
 from auditor.logs.record import Record, Span
 from auditor.text import duration, number, percent
 
 _RESTING = 0.5
 """Share of samples at which a compressed or rounded actuator rests while the error moves."""
+
+_NOTHING_LEFT = 1e-9
+"""Null replays below this differ by floating point only."""
 
 _MANUAL = 60
 """Samples in a row at which a free actuator must rest before it looks like manual operation."""
@@ -54,16 +58,11 @@ def likely_causes(record: Record, controller: Pid, plant: Plant, null: float) ->
     """
     if null <= thresholds.NULL_GOOD:
         return ()
-    rho = controller_residual(record, controller).rho
     found = (
-        *_skew(record, controller, plant, null),
-        *_limits(record, controller, plant, null),
-        *_form(record, controller, plant, null),
-        *_rounding(record),
+        *_mended(record, controller, plant, null),
         *_retuning(record, controller),
-        *_gains(record, controller, plant, null),
-        *_feedforward(record, rho),
-        *_manual(record),
+        *_feedforward(record, controller_residual(record, controller).rho),
+        *_resting(record),
     )
     return found or (
         "nothing that was tested explains it (skew, limits, integral form, rounding, retuning, gains, feedforward, "
@@ -71,14 +70,32 @@ def likely_causes(record: Record, controller: Pid, plant: Plant, null: float) ->
     )
 
 
-def _skew(record: Record, controller: Pid, plant: Plant, null: float) -> Iterator[str]:
-    for lag in (1, -1, 2, -2):
-        if null_replay(shift_actuator(record, lag), controller, plant) < thresholds.CAUSE_HALVES * null:
-            yield skew_words(lag)
-            return
+@dataclass(frozen=True, slots=True)
+class _Mend:
+    """One change, what it means in words, and the null replay after it."""
+
+    words: str
+    null: float
 
 
-def _limits(record: Record, controller: Pid, plant: Plant, null: float) -> Iterator[str]:
+def _mended(record: Record, controller: Pid, plant: Plant, null: float) -> tuple[str, ...]:
+    """Return the changes that mend most; the gains only where no other name for the same law does."""
+
+    def after(words: str, other: Pid, shifted: Record = record) -> _Mend:
+        return _Mend(words, max(_NOTHING_LEFT, null_replay(shifted, other, plant)))
+
+    mends = [after(skew_words(lag), controller, shift_actuator(record, lag)) for lag in (1, -1, 2, -2)]
+    mends += [after(words, other) for words, other in (*_limits(record, controller), *_forms(controller))]
+    good = [mend for mend in mends if mend.null < thresholds.CAUSE_HALVES * null]
+    best = min((mend.null for mend in good), default=math.inf)
+    mends = [after(words, other) for words, other in _gains(record, controller)]
+    good += [mend for mend in mends if mend.null < thresholds.CAUSE_HALVES * min(null, best)]
+    best = min((mend.null for mend in good), default=math.inf)
+    kept = [mend for mend in good if mend.null <= 2.0 * best]
+    return tuple(mend.words for mend in sorted(kept, key=lambda mend: mend.null))
+
+
+def _limits(record: Record, controller: Pid) -> Iterator[tuple[str, Pid]]:
     """Limits inside the record's own range, or an actuator that stops short of them."""
     inside = record.u[record.in_span]
     low, high = float(np.nanmin(inside)), float(np.nanmax(inside))
@@ -86,32 +103,19 @@ def _limits(record: Record, controller: Pid, plant: Plant, null: float) -> Itera
     stops_high = bool(np.any(stuck & (record.u == high))) or high > controller.high
     stops_low = bool(np.any(stuck & (record.u == low))) or low < controller.low
     other = replace(controller, low=low if stops_low else controller.low, high=high if stops_high else controller.high)
-    if (other.low, other.high) == (controller.low, controller.high):
-        return
-    if null_replay(record, other, plant) < thresholds.CAUSE_HALVES * null:
+    if (other.low, other.high) != (controller.low, controller.high):
+        stated = f"{number(controller.low)} and {number(controller.high)}"
         yield (
-            f"wrong limits: the actuator moves between {number(low)} and {number(high)}, "
-            f"the limits are {number(controller.low)} and {number(controller.high)}"
+            f"wrong limits: the actuator moves between {number(low)} and {number(high)}, the limits are {stated}",
+            other,
         )
 
 
-def _form(record: Record, controller: Pid, plant: Plant, null: float) -> Iterator[str]:
+def _forms(controller: Pid) -> Iterator[tuple[str, Pid]]:
     for form in INTEGRALS:
-        other = replace(controller, integral=form)
-        if form != controller.integral and null_replay(record, other, plant) < thresholds.CAUSE_HALVES * null:
-            yield f"wrong integral form: '{form}' returns the record better than '{controller.integral}'"
-            return
-
-
-def _rounding(record: Record) -> Iterator[str]:
-    inside = within(record)
-    resting = float(np.mean((moves(record.u) == 0)[inside] & (moves(record.e) != 0)[inside])) if inside.any() else 0.0
-    if resting < _RESTING:
-        return
-    if record.u_quantum is not None:
-        yield f"the actuator is rounded to {number(record.u_quantum)}: it rests on {percent(resting)} of the samples"
-    elif not saturates(record):
-        yield f"the actuator looks compressed by its archive: it rests on {percent(resting)} of the samples"
+        if form != controller.integral:
+            words = f"wrong integral form: '{form}' returns the record better than '{controller.integral}'"
+            yield words, replace(controller, integral=form)
 
 
 def _retuning(record: Record, controller: Pid) -> Iterator[str]:
@@ -147,20 +151,23 @@ def _thirds(record: Record) -> Iterator[Record]:
     """Three parts of equal length, each with the spans inside it."""
     cuts = np.linspace(0, len(record), 4).astype(int)
     for start, stop in pairwise(cuts.tolist()):
-        clipped = (Span(max(span.start, start), min(span.stop, stop)) for span in record.spans)
-        yield replace(record, spans=tuple(span for span in clipped if len(span) > 1))
+        clipped = ((max(span.start, start), min(span.stop, stop)) for span in record.spans)
+        yield replace(record, spans=tuple(Span(a, b) for a, b in clipped if b - a > 1))
 
 
-def _gains(record: Record, controller: Pid, plant: Plant, null: float) -> Iterator[str]:
+def _gains(record: Record, controller: Pid) -> Iterator[tuple[str, Pid]]:
     """Take the gains that the record itself shows."""
     fitted = _fitted(record, controller)
     if fitted is None or fitted[0] == 0.0:
         return
     time = float(fitted[0] / fitted[1]) if len(fitted) > 1 and fitted[1] != 0 else math.inf
     other = replace(controller, gain=float(fitted[0]), integral_time=time, integral="backward")
-    if null_replay(record, other, plant) < thresholds.CAUSE_HALVES * null:
-        given = replace(controller, gain=float(coefficients_of(controller, record.period)[0]))
-        yield f"wrong gains: the record shows {_in_words(other)} (backward form), the controller has {_in_words(given)}"
+    own = coefficients_of(controller, record.period)
+    given = replace(controller, gain=float(own[0]))
+    yield (
+        f"wrong gains: the record shows {_in_words(other)} (backward form), the controller has {_in_words(given)}",
+        other,
+    )
 
 
 def _in_words(controller: Pid) -> str:
@@ -174,16 +181,16 @@ def _feedforward(record: Record, rho: FloatArray) -> Iterator[str]:
         yield f"feedforward: declared disturbances explain {percent(share)} of what the controller leaves unexplained"
 
 
-def _manual(record: Record) -> Iterator[str]:
-    """A free actuator that rests for long while the error moves."""
+def _resting(record: Record) -> Iterator[str]:
+    """An actuator away from its limits that rests while the error moves: rounded, compressed, or in a hand."""
+    usable = within(record) & ~at_limit(record)
+    resting = (moves(record.u) == 0) & usable
+    share = float(np.mean((resting & (moves(record.e) != 0))[usable])) if usable.any() else 0.0
+    longest = longest_run(resting)
     if record.u_quantum is not None:
-        return
-    longest = 0
-    for span in record.spans:
-        u = record.u[span.start : span.stop]
-        edges = np.flatnonzero(np.diff(u, prepend=np.nan, append=np.nan) != 0)
-        lengths = np.diff(edges)
-        limited = (u[edges[:-1]] >= record.high) | (u[edges[:-1]] <= record.low)
-        longest = max(longest, int(np.max(np.where(limited, 0, lengths), initial=0)))
-    if longest >= _MANUAL:
+        if share >= _RESTING:
+            yield f"the actuator is rounded to {number(record.u_quantum)}: it rests on {percent(share)} of the samples"
+    elif share >= _RESTING:
+        yield f"the actuator looks compressed by its archive: it rests on {percent(share)} of the samples"
+    elif longest >= _MANUAL:
         yield f"manual operation: the actuator rests for {duration(longest * record.period)} while the error moves"

@@ -18,8 +18,9 @@ from auditor.identify.alignment import LAGS, Match, best_match, lay_out, setpoin
 from auditor.identify.coarse import on_row_clock, rows_apart
 from auditor.identify.gains import coefficients_of, controller_of, roundest, stated_controller, terms_of
 from auditor.identify.limits import saturates
-from auditor.identify.regression import Fit, Signals, measured, read_signals, residual_of
+from auditor.identify.regression import Fit, measured, residual_of
 from auditor.identify.residual import anti_windup_of
+from auditor.identify.signals import Signals, read_signals
 from auditor.logs.record import Record
 from auditor.loop import ControllerSettings, Loop
 from auditor.text import duration, number
@@ -103,7 +104,8 @@ def recover_controller(record: Record, loop: Loop) -> Recovery:
 def _on_loop_clock(found: Recovery, record: Record, settings: ControllerSettings | None) -> Recovery:
     """Count the skew in the loop's samples, and find the anti-windup, which needs all of them."""
     apart = rows_apart(record)
-    found = replace(found, skew_samples=found.skew_samples * apart)
+    table = tuple((lag * apart, left) for lag, left in found.lag_table)
+    found = replace(found, skew_samples=found.skew_samples * apart, lag_table=table)
     if found.usable and (settings is None or settings.anti_windup is None):
         found = replace(found, controller=anti_windup_of(shift_actuator(record, found.skew_samples), found.controller))
     if apart == 1:
@@ -220,7 +222,7 @@ def _first_clearly_best(left: dict[tuple[int, str], float]) -> tuple[int, str]:
     best = next(iter(left))
     for key in left:
         # Two exact fits differ by rounding only.
-        if left[key] < thresholds.LAG_BETTER * max(left[best], _ROUNDING):
+        if max(left[key], _ROUNDING) < thresholds.LAG_BETTER * max(left[best], _ROUNDING):
             best = key
     return best
 
@@ -235,7 +237,7 @@ def _disagreement(record: Record, match: Match) -> str:
     time = "none" if math.isinf(own.integral_time) else duration(own.integral_time)
     return (
         f"the log does not agree with the file's gains: it shows gain {number(own.gain, 4)}, integral time {time} "
-        f"(backward form), which leaves {100 * match.fit.relative:.2g} % of the actuator's movement"
+        f"(backward form); {_left_words(match.fit.relative)}"
     )
 
 

@@ -1,8 +1,8 @@
 """The change in operation that would let a log answer.
 
 Sizes follow what was measured on loops with known truth in regulation without setpoint moves: a bumpless manual
-period hardly helps; one manual interval that starts with a bump of one deviation of the actuator, or one setpoint step of three
-deviations of the error, roughly halves the error of the answers.
+period hardly helps; one manual interval that starts with a bump of one deviation of the actuator, or one setpoint
+step of three deviations of the error, roughly halves the error of the answers.
 """
 
 from __future__ import annotations
@@ -36,9 +36,11 @@ def suggest(record: Record, loop: Loop, tau_cl_s: float | None = None) -> str:
     hold = duration(max(4.0 * SETTLINGS * tau, 20.0 * record.period))
     y_unit, u_unit = loop.signals.measurement.unit, loop.signals.actuator.unit
     if bump == 0.0:
-        return f"What would settle it: a log in which the actuator moves; one setpoint step, held for {hold}, is enough."
+        return (
+            f"What would settle it: a log in which the actuator moves; one setpoint step, held for {hold}, is enough."
+        )
     return (
-        f"What would settle it: one setpoint step of about {number(step, 2)} {y_unit} held for {hold}, twice, or one manual "
-        f"interval of {hold} that starts with an actuator bump of {number(bump, 2)} {u_unit}; then the same audit on the "
-        "longer log."
+        f"What would settle it: one setpoint step of about {number(step, 2)} {y_unit} held for {hold}, twice, or one "
+        f"manual interval of {hold} that starts with an actuator bump of {number(bump, 2)} {u_unit}; then the same "
+        "audit on the longer log."
     )

@@ -1,6 +1,6 @@
 """The plants and load entries the estimator may choose from, and the way from a point to a `Plant`.
 
-A point is a vector of eight coordinates (`auditor.kernels.zero_order_hold`) with a structure and a load entry, in
+A point is a vector of eight coordinates (`auditor.kernels.points`) with a structure and a load entry, in
 units of one base period and of the controller's gain: with u divided by K a loop of negative action looks like one
 of positive action, and no bound depends on the units of the log.
 """
@@ -16,11 +16,10 @@ from scipy.linalg import expm
 from auditor.arrays import BoolArray, FloatArray, IntArray, read_only
 from auditor.errors import CannotAnswerError, Problem
 from auditor.identify.plant import Load, Plant
-from auditor.kernels import spectral as S
-from auditor.kernels import zero_order_hold as Z
+from auditor.kernels import points
+from auditor.kernels.zero_order_hold import chain, oscillator, zero_of
 
 PLANT_TYPES = ("self-regulating", "integrating", "unstable")
-STRUCTURES = Z.OSCILLATOR + 1
 ENTRY_NAMES = (
     "input",
     "output",
@@ -80,8 +79,8 @@ def family(plant: str | None, lowest_frequency: float) -> Family:
     low, high, allowed = _LOW.copy(), _HIGH.copy(), _allowed()
     below = {None: lowest_frequency / _INDISTINCT, "self-regulating": 0.0}.get(plant, np.inf)
     if plant == "integrating":
-        low[Z.LN_POLE] = high[Z.LN_POLE] = np.log(INTEGRATOR_POLE)
-        allowed[Z.OSCILLATOR] = False
+        low[points.LN_POLE] = high[points.LN_POLE] = np.log(INTEGRATOR_POLE)
+        allowed[points.OSCILLATOR] = False
     return Family(low=read_only(low), high=read_only(high), allowed=read_only(allowed), integrator_below=below)
 
 
@@ -97,10 +96,10 @@ def _unstable() -> Problem:
 
 def _allowed() -> BoolArray:
     """Entries that sit behind a short lag need one, between short lags two; an oscillator has two ends only."""
-    allowed = np.ones((STRUCTURES, S.ENTRIES), dtype=np.bool_)
-    allowed[0, [S.AFTER_SHORT_LAGS, S.AFTER_LONG_LAG]] = False
-    allowed[:2, S.BETWEEN_SHORT_LAGS] = False
-    allowed[Z.OSCILLATOR, S.AFTER_SHORT_LAGS :] = False
+    allowed = np.ones((points.STRUCTURES, points.ENTRIES), dtype=np.bool_)
+    allowed[0, [points.AFTER_SHORT_LAGS, points.AFTER_LONG_LAG]] = False
+    allowed[:2, points.BETWEEN_SHORT_LAGS] = False
+    allowed[points.OSCILLATOR, points.AFTER_SHORT_LAGS :] = False
     return allowed
 
 
@@ -123,19 +122,19 @@ def to_plant(
     log_posterior : float
     """
     m, entry = int(kind[0]), int(kind[1])
-    oscillates = m == Z.OSCILLATOR
-    M, C = Z.oscillator(x) if oscillates else Z.chain(x, m)
-    A, B0, B1, d = _sampled(M, float(x[Z.DELAY]))
+    oscillates = m == points.OSCILLATOR
+    M, C = oscillator(x) if oscillates else chain(x, m)
+    A, B0, B1, d = _sampled(M, float(x[points.DELAY]))
     static, ramp = _gains(x, oscillates, kinds.integrator_below)
     return Plant(
         A=A, B0=B0, B1=B1, C=read_only(C[1:] / gain), delay=d,
         structure="oscillatory" if oscillates else "lags",
-        delay_s=float(x[Z.DELAY]) * period,
+        delay_s=float(x[points.DELAY]) * period,
         gain=None if static is None else static / gain,
         gain_per_s=None if ramp is None else ramp / (gain * period),
         time_constants_s=tuple(period * T for T in _time_constants(x, m, static is None)),
-        damping=float(np.exp(x[Z.LN_POLE])) if oscillates else None,
-        zero_s=0.0 if oscillates or m == 0 else period * float(Z.zero_of(float(x[Z.ZERO]))),
+        damping=float(np.exp(x[points.LN_POLE])) if oscillates else None,
+        zero_s=0.0 if oscillates or m == 0 else period * float(zero_of(float(x[points.ZERO]))),
         log_posterior=log_posterior,
         load=_load(x, entry),
         parameters=(*(float(v) for v in x), float(m), float(entry)),
@@ -145,7 +144,7 @@ def to_plant(
 def to_point(plant: Plant) -> tuple[FloatArray, IntArray]:
     """Return coordinates, shape (8,), and kind, shape (2,), of a plant that came from `to_plant`."""
     values = np.array(plant.parameters)
-    return values[: Z.COORDINATES], values[Z.COORDINATES :].astype(np.int64)
+    return values[: points.COORDINATES], values[points.COORDINATES :].astype(np.int64)
 
 
 def _sampled(M: FloatArray, delay: float) -> tuple[FloatArray, FloatArray, FloatArray, int]:
@@ -159,26 +158,26 @@ def _sampled(M: FloatArray, delay: float) -> tuple[FloatArray, FloatArray, Float
 
 def _gains(x: FloatArray, oscillates: bool, integrator_below: float) -> tuple[float | None, float | None]:
     """Static gain, or ramp per base period of an integrating plant, both for u in units of K."""
-    gain = float(np.exp(x[Z.LN_GAIN]))
+    gain = float(np.exp(x[points.LN_GAIN]))
     if oscillates:
-        return gain * float(np.exp(x[Z.LN_LAGS])), None
-    pole = float(np.exp(x[Z.LN_POLE]))
+        return gain * float(np.exp(x[points.LN_LAGS])), None
+    pole = float(np.exp(x[points.LN_POLE]))
     return (None, gain) if pole < integrator_below else (gain / pole, None)
 
 
 def _time_constants(x: FloatArray, m: int, integrating: bool) -> tuple[float, ...]:
     """Lags, longest first [base periods]; the oscillator has 1/w0 once, its damping says the rest."""
-    lags = float(np.exp(x[Z.LN_LAGS]))
-    if m == Z.OSCILLATOR:
+    lags = float(np.exp(x[points.LN_LAGS]))
+    if m == points.OSCILLATOR:
         return (lags,)
-    long = () if integrating else (float(np.exp(-x[Z.LN_POLE])),)
+    long = () if integrating else (float(np.exp(-x[points.LN_POLE])),)
     return tuple(sorted((*long, *(m * (lags / max(m, 1),))), reverse=True))
 
 
 def _load(x: FloatArray, entry: int) -> Load:
     return Load(
         entry=ENTRY_NAMES[entry],
-        phi=1.0 - float(np.exp(x[Z.LN_CORNER])),
-        walk=float(np.exp(x[Z.LN_WALK])),
-        noise=float(np.exp(x[Z.LN_NOISE])),
+        phi=1.0 - float(np.exp(x[points.LN_CORNER])),
+        walk=float(np.exp(x[points.LN_WALK])),
+        noise=float(np.exp(x[points.LN_NOISE])),
     )

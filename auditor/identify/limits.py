@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+
 import numpy as np
 
 from auditor.arrays import BoolArray
@@ -62,10 +64,19 @@ def _slack(record: Record) -> float:
     return max(0.5 * (record.u_quantum or 0.0), 1e-9 * (width if np.isfinite(width) else 0.0))
 
 
+def longest_run(mask: BoolArray) -> int:
+    """Return the number of samples of the longest run of True."""
+    return max((stop - start for start, stop in _runs(mask)), default=0)
+
+
 def _long_runs(mask: BoolArray, shortest: int) -> BoolArray:
     """Keep runs of True of at least `shortest` samples."""
-    edges = np.flatnonzero(np.diff(np.concatenate(([0], mask.astype(np.int8), [0]))))
     kept = np.zeros(len(mask), dtype=np.bool_)
-    for start, stop in zip(edges[::2], edges[1::2], strict=True):
+    for start, stop in _runs(mask):
         kept[start:stop] = stop - start >= shortest
     return kept
+
+
+def _runs(mask: BoolArray) -> Iterator[tuple[int, int]]:
+    edges = np.flatnonzero(np.diff(np.concatenate(([0], mask.astype(np.int8), [0])))).tolist()
+    return zip(edges[::2], edges[1::2], strict=True)

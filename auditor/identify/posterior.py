@@ -1,6 +1,8 @@
-"""The density the sampler draws from: spectrum of the record, prior, family; and the mask of ordinates that spoil it."""
+"""The density the sampler draws from: record, prior, family; and the mask of ordinates that spoil it."""
 
 from __future__ import annotations
+
+from collections.abc import Sequence
 
 import numpy as np
 from scipy.ndimage import median_filter
@@ -8,6 +10,7 @@ from scipy.ndimage import median_filter
 from auditor.arrays import BoolArray, FloatArray, IntArray
 from auditor.identify.family import LONGEST_DELAY, Family
 from auditor.identify.spectrum import Spectrum, binned, tabulate
+from auditor.kernels import points
 from auditor.kernels import spectral as kernel
 from auditor.kernels.chains import Chains, Target, evaluate
 from auditor.kernels.prior import Tuning
@@ -58,6 +61,26 @@ def chains_at(x: FloatArray, kind: IntArray, temperature: float, density: Target
     return chains
 
 
+def pick(chains: Chains, index: IntArray) -> Chains:
+    """Return copies of the chains at `index`."""
+    return Chains(
+        x=chains.x[index],
+        kind=chains.kind[index],
+        log_posterior=chains.log_posterior[index],
+        log_likelihood=chains.log_likelihood[index],
+    )
+
+
+def join(parts: Sequence[Chains]) -> Chains:
+    """Return all chains of several sets, one set after the other."""
+    return Chains(
+        x=np.concatenate([part.x for part in parts]),
+        kind=np.concatenate([part.kind for part in parts]),
+        log_posterior=np.concatenate([part.log_posterior for part in parts]),
+        log_likelihood=np.concatenate([part.log_likelihood for part in parts]),
+    )
+
+
 def unspoilt(spectrum: Spectrum, x: FloatArray, kind: IntArray) -> BoolArray:
     """Return the ordinates, shape (M,), that are no outliers under the plant at `x`.
 
@@ -78,7 +101,7 @@ def unspoilt(spectrum: Spectrum, x: FloatArray, kind: IntArray) -> BoolArray:
 
 def _misfit(spectrum: Spectrum, used: slice, x: FloatArray, kind: IntArray) -> FloatArray:
     """|Y − G U|² / Phi per ordinate."""
-    longest = int(np.floor(x[kernel.Z.DELAY]))
+    longest = int(np.floor(x[points.DELAY]))
     parts = []
     for start in range(used.start, used.stop, _BLOCK):
         block = slice(start, min(start + _BLOCK, used.stop))

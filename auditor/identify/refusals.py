@@ -8,7 +8,8 @@ from auditor.arrays import FloatArray
 from auditor.errors import Problem
 from auditor.identify import thresholds
 from auditor.identify.alignment import Match, lay_out
-from auditor.identify.regression import Signals, residual_of
+from auditor.identify.regression import residual_of
+from auditor.identify.signals import Signals
 from auditor.logs.record import Record
 from auditor.text import duration, percent
 
@@ -53,7 +54,7 @@ def after_fitting(record: Record, signals: Signals, match: Match) -> Problem | N
     return Problem(
         what="no P, PI or PID controller explains the actuator",
         where="actuator",
-        found=f"the best one, a {match.terms.kind} controller, leaves {percent(left)} of the actuator's movement",
+        found=f"the best one, a {match.terms.kind} controller, leaves {percent(min(left, 1.0))} of its movement",
         expected=f"at most {percent(thresholds.UNEXPLAINED_LIMIT)}",
         do=_likely(record) + "; " + _STATE_IT,
     )

@@ -21,8 +21,7 @@ import numpy as np
 from scipy.signal import lfilter
 
 from auditor.arrays import BoolArray, FloatArray, IntArray
-from auditor.identify.limits import at_limit, dead, slewing
-from auditor.logs.record import Record
+from auditor.identify.signals import Signals
 
 PASSES = 30
 """Reweightings of the least-absolute fit."""
@@ -98,49 +97,6 @@ class Fit:
     def rows(self) -> int:
         """Number of rows used."""
         return len(self.residual)
-
-
-@dataclass(frozen=True, eq=False, slots=True, kw_only=True)
-class Signals:
-    """The record as the regression sees it; `free` is False at limits, `moving` also while slewing.
-
-    Attributes
-    ----------
-    e, y, r, u : ndarray, shape (N,)
-        `e` with the controller's own dead-band.
-    w : ndarray, shape (n_w, N)
-    good, free, moving : ndarray of bool, shape (N,)
-    age, length : ndarray of int, shape (N,)
-        Samples since the span began, −1 outside, and samples of the span.
-    stretch : ndarray of int, shape (N,)
-        Number of the unbroken stretch away from limits.
-    """
-
-    e: FloatArray
-    y: FloatArray
-    r: FloatArray
-    u: FloatArray
-    w: FloatArray
-    good: BoolArray
-    free: BoolArray
-    moving: BoolArray
-    age: IntArray
-    length: IntArray
-
-
-def read_signals(record: Record, deadband: float = 0.0) -> Signals:
-    """Prepare a record for regressions."""
-    age, length = np.full(len(record), -1, dtype=np.int64), np.zeros(len(record), dtype=np.int64)
-    for span in record.spans:
-        age[span.start : span.stop] = np.arange(len(span))
-        length[span.start : span.stop] = len(span)
-    good = record.valid & (age >= 0) & ~dead(record)
-    free = good & ~at_limit(record)
-    e = np.where(np.abs(record.e) <= deadband, 0.0, record.e) if deadband > 0 else record.e
-    e, y, r, u = (np.where(good, x, 0.0) for x in (e, record.y, record.r, record.u))
-    w = np.where(good & np.isfinite(record.w), record.w, 0.0)
-    moving = free & ~slewing(record)
-    return Signals(e=e, y=y, r=r, u=u, w=w, good=good, free=free, moving=moving, age=age, length=length)
 
 
 def derivative_state(signals: Signals, terms: Terms) -> FloatArray:

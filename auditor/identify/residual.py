@@ -195,8 +195,21 @@ def _null_deviation(record: Record, controller: Pid, plant: Plant, rho: FloatArr
     A, B0, B1, C = (read_only(np.asarray(matrix, dtype=float)) for matrix in (plant.A, plant.B0, plant.B1, plant.C))
     for span in record.spans:
         replay_every_sample(
-            y, r, u, injected, span.start, span.stop,
-            A, B0, B1, C, plant.delay, record.y_quantum or 0.0, pid, form, replayed,
+            y,
+            r,
+            u,
+            injected,
+            span.start,
+            span.stop,
+            A,
+            B0,
+            B1,
+            C,
+            plant.delay,
+            record.y_quantum or 0.0,
+            pid,
+            form,
+            replayed,
         )
     return np.where(record.in_span, replayed - record.y, 0.0)
 

@@ -14,13 +14,13 @@ import numpy as np
 
 from auditor.arrays import BoolArray, FloatArray, IntArray
 from auditor.identify.family import Family
-from auditor.identify.posterior import TEMPERATURE, chains_at, target, unspoilt
+from auditor.identify.posterior import TEMPERATURE, chains_at, join, pick, target, unspoilt
 from auditor.identify.spectrum import Spectrum
 from auditor.identify.starts import first_chains
-from auditor.kernels import zero_order_hold as Z
+from auditor.kernels import points
 from auditor.kernels.chains import Chains, Moves, Target, generation
 from auditor.kernels.prior import Tuning
-from auditor.kernels.spectral import ENTRIES, IMPOSSIBLE
+from auditor.kernels.spectral import IMPOSSIBLE
 
 COOLING = 220  # generations
 SETTLED = 280
@@ -93,7 +93,7 @@ def cool(
         if g > 0:
             _reweigh(chains, log_weight, 1.0 / temperature - 1.0 / temperatures[g - 1])
             if _effective_size(log_weight) < 0.5 * len(log_weight) or g == COOLING - 1:
-                chains = _pick(chains, _systematic(np.exp(log_weight - log_weight.max()), rng))
+                chains = pick(chains, _systematic(np.exp(log_weight - log_weight.max()), rng))
                 log_weight[:] = 0.0
         generation(chains, draw_moves(len(chains.x), density, rng), temperature, density)
         _report(g, 0, observe)
@@ -103,18 +103,18 @@ def cool(
 def settle(
     chains: Chains, density: Target, rng: np.random.Generator, observe: Callable[[float], None] = lambda share: None
 ) -> tuple[FloatArray, IntArray]:
-    """Run the chains at the final temperature; return coordinates and kinds of all snapshots within reach of the best."""
+    """Run the chains at the final temperature; return coordinates and kinds of the snapshots near the best."""
     kept = []
     for g in range(SETTLED):
         if g == _RESTART:
             chains = _replace_left_behind(chains, rng)
         generation(chains, draw_moves(len(chains.x), density, rng), TEMPERATURE, density)
         if g + 1 in _SNAPSHOTS:
-            kept.append(_pick(chains, np.arange(len(chains.x))))
+            kept.append(pick(chains, np.arange(len(chains.x))))
         _report(g, COOLING, observe)
-    x, kind, log_posterior, _ = (np.concatenate(columns) for columns in zip(*kept, strict=True))
-    near = log_posterior > log_posterior.max() - _GAP
-    return x[near], kind[near]
+    members = join(kept)
+    near = members.log_posterior > members.log_posterior.max() - _GAP
+    return members.x[near], members.kind[near]
 
 
 def draw_moves(n: int, density: Target, rng: np.random.Generator) -> Moves:
@@ -125,16 +125,16 @@ def draw_moves(n: int, density: Target, rng: np.random.Generator) -> Moves:
     """
     along = rng.random(n)
     full = np.where(along < _FULL_STRIDE, 1.0, _LONGEST_STRIDE * rng.random(n))
-    stride = np.repeat(full[:, None], Z.COORDINATES, axis=1)
+    stride = np.repeat(full[:, None], points.COORDINATES, axis=1)
     few = along > 1.0 - _ALONG_FEW
-    chosen = np.zeros((n, Z.COORDINATES), dtype=np.bool_)
-    np.put_along_axis(chosen, rng.integers(Z.COORDINATES, size=(n, 2)), True, axis=1)
+    chosen = np.zeros((n, points.COORDINATES), dtype=np.bool_)
+    np.put_along_axis(chosen, rng.integers(points.COORDINATES, size=(n, 2)), True, axis=1)
     stride[few] = np.where(chosen[few], _FEW_STRIDE, 0.0)
     moving = (density.low < density.high) & (chosen | ~few[:, None])
     return Moves(
         pair=rng.integers(n, size=(n, 2)),
         stride=stride,
-        jitter=np.where(moving, _JITTER * rng.standard_normal((n, Z.COORDINATES)), 0.0),
+        jitter=np.where(moving, _JITTER * rng.standard_normal((n, points.COORDINATES)), 0.0),
         kind=_kind_changes(n, rng),
         log_uniform=np.log1p(-rng.random(n)),
     )
@@ -143,7 +143,7 @@ def draw_moves(n: int, density: Target, rng: np.random.Generator) -> Moves:
 def _kind_changes(n: int, rng: np.random.Generator) -> IntArray:
     change = np.zeros((n, 2), dtype=np.int64)
     changes, of_structure = rng.random(n) < _CHANGE_KIND, rng.random(n) < _CHANGE_STRUCTURE
-    step, shift = 2 * rng.integers(2, size=n) - 1, rng.integers(1, ENTRIES, size=n)
+    step, shift = 2 * rng.integers(2, size=n) - 1, rng.integers(1, points.ENTRIES, size=n)
     change[:, 0] = np.where(changes & of_structure, step, 0)
     change[:, 1] = np.where(changes & ~of_structure, shift, 0)
     return change
@@ -176,11 +176,7 @@ def _replace_left_behind(chains: Chains, rng: np.random.Generator) -> Chains:
     index = np.arange(len(chains.x))
     behind = chains.log_posterior < chains.log_posterior.max() - _GAP
     index[behind] = rng.choice(good, int(behind.sum()))
-    return _pick(chains, index)
-
-
-def _pick(chains: Chains, index: IntArray) -> Chains:
-    return Chains(*(column[index].copy() for column in chains))
+    return pick(chains, index)
 
 
 def _report(g: int, before: int, observe: Callable[[float], None]) -> None:

@@ -13,9 +13,8 @@ import numpy as np
 from auditor.arrays import FloatArray, IntArray
 from auditor.errors import CannotAnswerError, Problem
 from auditor.identify.family import Family
-from auditor.identify.posterior import chains_at
-from auditor.kernels import spectral as S
-from auditor.kernels import zero_order_hold as Z
+from auditor.identify.posterior import chains_at, join, pick
+from auditor.kernels import points
 from auditor.kernels.chains import Chains, Target
 from auditor.kernels.spectral import IMPOSSIBLE
 
@@ -33,14 +32,14 @@ class Cell(NamedTuple):
 
 
 CELLS = (
-    Cell(False, S.AT_INPUT, 0.30),
-    Cell(False, S.AT_OUTPUT, 0.12),
-    Cell(False, S.AFTER_SHORT_LAGS, 0.11),
-    Cell(False, S.AFTER_LONG_LAG, 0.11),
-    Cell(False, S.BETWEEN_SHORT_LAGS, 0.11),
-    Cell(False, S.AT_BOTH_ENDS, 0.11),
-    Cell(True, S.AT_INPUT, 0.09),
-    Cell(True, S.AT_OUTPUT, 0.05),
+    Cell(False, points.AT_INPUT, 0.30),
+    Cell(False, points.AT_OUTPUT, 0.12),
+    Cell(False, points.AFTER_SHORT_LAGS, 0.11),
+    Cell(False, points.AFTER_LONG_LAG, 0.11),
+    Cell(False, points.BETWEEN_SHORT_LAGS, 0.11),
+    Cell(False, points.AT_BOTH_ENDS, 0.11),
+    Cell(True, points.AT_INPUT, 0.09),
+    Cell(True, points.AT_OUTPUT, 0.05),
 )
 
 
@@ -58,17 +57,17 @@ def random_points(
         Ti [base periods], may be infinite.
     rng : Generator
     """
-    x = np.empty((n, Z.COORDINATES))
-    structures = np.flatnonzero(kinds.allowed[: Z.OSCILLATOR, cell.entry])
-    structure = np.full(n, Z.OSCILLATOR) if cell.oscillates else rng.choice(structures, n)
-    x[:, Z.DELAY] = np.where(rng.random(n) < 0.5, rng.uniform(0.0, 8.0, n), rng.uniform(0.0, 35.0, n))
-    x[:, Z.LN_LAGS] = rng.uniform(np.log(2.0), np.log(60.0), n)
-    x[:, Z.LN_CORNER] = rng.uniform(np.log(3e-4), np.log(0.1), n)
-    x[:, Z.LN_WALK] = rng.uniform(-12.0, -2.0, n)
-    x[:, Z.LN_NOISE] = rng.uniform(-4.0, 12.0, n)
-    x[:, Z.ZERO] = rng.uniform(-6.0, 6.0, n)
-    x[:, Z.LN_POLE] = rng.uniform(np.log(0.03), 0.0, n) if cell.oscillates else _ln_poles(n, integral_time, rng)
-    x[:, Z.LN_GAIN] = _ln_gains(x, structure, cell.oscillates, integral_time, rng)
+    x = np.empty((n, points.COORDINATES))
+    structures = np.flatnonzero(kinds.allowed[: points.OSCILLATOR, cell.entry])
+    structure = np.full(n, points.OSCILLATOR) if cell.oscillates else rng.choice(structures, n)
+    x[:, points.DELAY] = np.where(rng.random(n) < 0.5, rng.uniform(0.0, 8.0, n), rng.uniform(0.0, 35.0, n))
+    x[:, points.LN_LAGS] = rng.uniform(np.log(2.0), np.log(60.0), n)
+    x[:, points.LN_CORNER] = rng.uniform(np.log(3e-4), np.log(0.1), n)
+    x[:, points.LN_WALK] = rng.uniform(-12.0, -2.0, n)
+    x[:, points.LN_NOISE] = rng.uniform(-4.0, 12.0, n)
+    x[:, points.ZERO] = rng.uniform(-6.0, 6.0, n)
+    x[:, points.LN_POLE] = rng.uniform(np.log(0.03), 0.0, n) if cell.oscillates else _ln_poles(n, integral_time, rng)
+    x[:, points.LN_GAIN] = _ln_gains(x, structure, cell.oscillates, integral_time, rng)
     kind = np.stack([structure, np.full(n, cell.entry)], axis=1).astype(np.int64)
     return np.clip(x, kinds.low, kinds.high), kind
 
@@ -84,13 +83,13 @@ def _ln_gains(
     x: FloatArray, structure: IntArray, oscillates: bool, integral_time: float, rng: np.random.Generator
 ) -> FloatArray:
     """A gain that gives the loop a usual margin: against delay and lags, or against the oscillation's peak."""
-    lags = np.where((structure > 0) & (not oscillates), np.exp(x[:, Z.LN_LAGS]), 0.0)
-    usual = -np.log(rng.uniform(0.8, 3.0, len(x)) * (x[:, Z.DELAY] + 0.7 * lags + 2.0))
+    lags = np.where((structure > 0) & (not oscillates), np.exp(x[:, points.LN_LAGS]), 0.0)
+    usual = -np.log(rng.uniform(0.8, 3.0, len(x)) * (x[:, points.DELAY] + 0.7 * lags + 2.0))
     if not oscillates or not np.isfinite(integral_time):
         return np.asarray(usual)
     share = rng.uniform(0.1, 0.9, len(x))
     # Integral action alone reaches −180° at w0, with gain kv / (2 zeta w0² Ti) there.
-    of_peak = np.log(2.0 * share * integral_time) + x[:, Z.LN_POLE] - 2.0 * x[:, Z.LN_LAGS]
+    of_peak = np.log(2.0 * share * integral_time) + x[:, points.LN_POLE] - 2.0 * x[:, points.LN_LAGS]
     return np.where(rng.random(len(x)) < 0.5, of_peak, usual)
 
 
@@ -105,27 +104,23 @@ def first_chains(
         When under every start the recorded loop would be unstable.
     """
     chosen = []
-    cells = [cell for cell in CELLS if kinds.allowed[Z.OSCILLATOR if cell.oscillates else 2, cell.entry]]
+    cells = [cell for cell in CELLS if kinds.allowed[points.OSCILLATOR if cell.oscillates else 2, cell.entry]]
     total = sum(cell.share for cell in cells)
     for cell in cells:
         n = round(STARTS * cell.share / total)
         tried = chains_at(*random_points(n, cell, kinds, integral_time, rng), temperature, density)
-        chosen.append(_take(tried, _choose(tried.log_posterior, round(CHAINS * cell.share / total), rng)))
-    pool = Chains(*(np.concatenate(columns) for columns in zip(*chosen, strict=True)))
+        chosen.append(pick(tried, _choose(tried.log_posterior, round(CHAINS * cell.share / total), rng)))
+    pool = join(chosen)
     if not len(pool.x):
         raise CannotAnswerError(_no_start())
     filling = rng.integers(len(pool.x), size=max(CHAINS - len(pool.x), 0))
-    return _take(pool, np.concatenate([np.arange(min(len(pool.x), CHAINS)), filling]))
+    return pick(pool, np.concatenate([np.arange(min(len(pool.x), CHAINS)), filling]))
 
 
 def _choose(log_posterior: FloatArray, wanted: int, rng: np.random.Generator) -> IntArray:
     order = np.argsort(-log_posterior, kind="stable")
     good = order[log_posterior[order] > IMPOSSIBLE][: _CHOICE * wanted]
     return rng.choice(good, min(len(good), wanted), replace=False) if len(good) else good
-
-
-def _take(chains: Chains, index: IntArray) -> Chains:
-    return Chains(*(np.ascontiguousarray(column[index]) for column in chains))
 
 
 def _no_start() -> Problem:

@@ -56,6 +56,9 @@ nothing about the controller, and their perfect fit would speak for any."""
 ROWS_NEEDED = 50
 """Samples away from limits below which nothing is recovered: four coefficients need an order more rows than that."""
 
+SCAN_SAMPLES = 60_000
+"""Longest part of a record in which lag and kind of controller are looked for."""
+
 SCAN_ROWS = 6_000
 """Rows that are enough to find the lag and the kind of controller; the gains then come from all rows."""
 

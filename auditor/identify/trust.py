@@ -73,7 +73,9 @@ def _null(seen: Evidence) -> tuple[str, str] | None:
     if null <= thresholds.NULL_GOOD:
         return None
     why = ("; ".join(seen.causes) + ".") if seen.causes else ""
-    shown = f"Replaying the clock itself misses the record by {percent(null, 1)} of the error's deviation. {why}".strip()
+    shown = (
+        f"Replaying the clock itself misses the record by {percent(null, 1)} of the error's deviation. {why}".strip()
+    )
     if null < thresholds.NULL_LIMIT:
         return "limited", shown
     if seen.explained_by_error >= thresholds.EXPLAINED_SHARE:
@@ -133,4 +135,7 @@ def _unstable_draws(seen: Evidence) -> tuple[str, str] | None:
     total = len(seen.plants) + seen.dropped
     if 2 * seen.dropped < total:
         return None
-    return "limited", f"{seen.dropped} of {total} likely plants were dropped: the recorded loop would be unstable under them."
+    return (
+        "limited",
+        f"{seen.dropped} of {total} likely plants were dropped: the recorded loop would be unstable under them.",
+    )

@@ -7,13 +7,12 @@ draws give the same bits, compiled or not.
 
 from __future__ import annotations
 
-import math
 from typing import NamedTuple
 
 import numpy as np
 
 from auditor.arrays import BoolArray, FloatArray, IntArray
-from auditor.kernels import zero_order_hold as Z
+from auditor.kernels import points
 from auditor.kernels.jit import compiled
 from auditor.kernels.prior import Tuning, log_prior
 from auditor.kernels.spectral import IMPOSSIBLE, WORK_ROWS, Bins, log_likelihood
@@ -89,10 +88,10 @@ def possible(x: FloatArray, m: int, entry: int, target: Target) -> bool:
     """True inside the bounds and where structure and entry exist together."""
     if m < 0 or m >= target.allowed.shape[0] or not target.allowed[m, entry]:
         return False
-    for i in range(Z.COORDINATES):
-        if not target.low[i] <= x[i] <= target.high[i]:
-            return False
-    return True
+    inside = True
+    for i in range(points.COORDINATES):
+        inside = inside and target.low[i] <= x[i] <= target.high[i]
+    return inside
 
 
 @compiled
@@ -124,16 +123,16 @@ def propose(i: int, chains: Chains, moves: Moves, y: FloatArray) -> None:
     """Write the proposal of chain i into `y`; a negative delay is reflected."""
     a = chains.x[moves.pair[i, 0]]
     b = chains.x[moves.pair[i, 1]]
-    for j in range(Z.COORDINATES):
+    for j in range(points.COORDINATES):
         y[j] = chains.x[i, j] + moves.stride[i, j] * (a[j] - b[j]) + moves.jitter[i, j]
-    y[Z.DELAY] = abs(y[Z.DELAY])
+    y[points.DELAY] = abs(y[points.DELAY])
 
 
 @compiled
 def generation(chains: Chains, moves: Moves, temperature: float, target: Target) -> None:
     """Let every chain propose once, in turn, and accept or stay (Metropolis)."""
     work = np.empty((WORK_ROWS, target.bins.measured.shape[1]))
-    y = np.empty(Z.COORDINATES)
+    y = np.empty(points.COORDINATES)
     entries = target.allowed.shape[1]
     for i in range(len(chains.x)):
         propose(i, chains, moves, y)

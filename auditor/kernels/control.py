@@ -49,7 +49,7 @@ def begin(control: FloatArray, count: IntArray, now: FloatArray, u0: float, pid:
 @compiled
 def bridged(
     I: float, e: float, then: float, held: float, m: float, pid: FloatArray, form: IntArray, alpha: float
-) -> float:  # noqa: E741
+) -> float:
     """I after a silence of m samples (3.1)."""
     b = then if form[R.INTEGRATE] == R.FORWARD else e
     b = 0.5 * (then + e) if form[R.INTEGRATE] == R.TRAPEZOID else b
@@ -61,11 +61,11 @@ def bridged(
 @compiled
 def unwound(
     I: float, before: float, v: float, rho: float, command: float, m: float, pid: FloatArray, form: IntArray
-) -> float:  # noqa: E741
+) -> float:
     """I after anti-windup; a controller without integral action keeps its bias."""
     share = 1.0 if pid[R.TRACKING] == 0.0 else min(1.0, m * pid[R.PERIOD] / pid[R.TRACKING])
     drained = I + (command - v - rho) * share
-    grows = (v + rho > pid[R.HIGH] and I > before) or (v + rho < pid[R.LOW] and I < before)
+    grows = (v + rho > pid[R.HIGH] and before < I) or (v + rho < pid[R.LOW] and before > I)
     frozen = before if grows else I
     result = drained if form[R.WINDUP] == R.WINDUP_BACK else I
     result = frozen if form[R.WINDUP] == R.WINDUP_FREEZE else result
@@ -74,7 +74,15 @@ def unwound(
 
 @compiled
 def run_lane(
-    lane: int, y: float, r: float, rho: float, m: float, alpha: float, control: FloatArray, pid: FloatArray, form: IntArray
+    lane: int,
+    y: float,
+    r: float,
+    rho: float,
+    m: float,
+    alpha: float,
+    control: FloatArray,
+    pid: FloatArray,
+    form: IntArray,
 ) -> None:
     """Run the controller of one lane on measurement y, m samples after it ran last; leaves the command in WOULD."""
     e = deadbanded(r - y, pid[R.DEADBAND])

@@ -37,7 +37,9 @@ def add_errors(
 
 
 @compiled
-def gaps_of_lane(updated: Any, lane: int, starts: Any, stops: Any, window: int, gaps: FloatArray, total: FloatArray) -> None:
+def gaps_of_lane(
+    updated: Any, lane: int, starts: Any, stops: Any, window: int, gaps: FloatArray, total: FloatArray
+) -> None:
     """Updates, gaps that begin and end inside one counted stretch, and the busiest window of one lane."""
     found = 0
     updates = 0

@@ -11,8 +11,7 @@ import math
 from typing import NamedTuple
 
 from auditor.arrays import FloatArray
-from auditor.kernels import spectral as S
-from auditor.kernels import zero_order_hold as Z
+from auditor.kernels import points
 from auditor.kernels.jit import compiled
 
 _SMALLEST_EXCESS = 1e-3  # Ms − 1 below this counts as this
@@ -51,13 +50,13 @@ def two_sided(t: float, above: float, below: float) -> float:
 def log_chain_prior(x: FloatArray, m: int, entry: int, tuning: Tuning) -> float:
     """Terms that only lag chains have."""
     value = two_sided(
-        -x[Z.LN_POLE] - tuning.log_integral_time - tuning.log_lag, tuning.lag_above, tuning.lag_below
+        -x[points.LN_POLE] - tuning.log_integral_time - tuning.log_lag, tuning.lag_above, tuning.lag_below
     )
-    if entry == S.AT_INPUT or entry == S.AT_BOTH_ENDS:
-        faster = x[Z.LN_CORNER] - x[Z.LN_GAIN]
+    if entry in (points.AT_INPUT, points.AT_BOTH_ENDS):
+        faster = x[points.LN_CORNER] - x[points.LN_GAIN]
         value += two_sided(max(faster, 0.0), tuning.corner_above, tuning.corner_above)
     if m > 0:
-        value -= tuning.crowding * max(x[Z.LN_LAGS] - math.log(m) + x[Z.LN_POLE], 0.0)
+        value -= tuning.crowding * max(x[points.LN_LAGS] - math.log(m) + x[points.LN_POLE], 0.0)
     return value
 
 
@@ -66,12 +65,12 @@ def log_prior(x: FloatArray, m: int, entry: int, peak: float, tuning: Tuning) ->
     """Log prior of the point `x` with structure m, load entry and peak sensitivity `peak`."""
     excess = math.log(max(peak - 1.0, _SMALLEST_EXCESS)) - tuning.log_excess
     value = two_sided(excess, tuning.excess_above, tuning.excess_below)
-    if entry == S.AT_OUTPUT:
+    if entry == points.AT_OUTPUT:
         value += tuning.at_output
-    elif entry > S.AT_OUTPUT:
+    elif entry > points.AT_OUTPUT:
         value += tuning.mid_plant
-    value += tuning.oscillatory if m == Z.OSCILLATOR else log_chain_prior(x, m, entry, tuning)
-    beyond = abs(x[Z.ZERO]) - Z.ZERO_DEAD_ZONE
+    value += tuning.oscillatory if m == points.OSCILLATOR else log_chain_prior(x, m, entry, tuning)
+    beyond = abs(x[points.ZERO]) - points.ZERO_DEAD_ZONE
     if beyond > 0.0:
         value += tuning.zero + two_sided(beyond, tuning.zero_spread, tuning.zero_spread)
     return value

@@ -20,7 +20,14 @@ from auditor.kernels.jit import RULE_TYPE, compiled, compiled_as
 
 @compiled
 def observe(
-    y: float, r: float, noise: FloatArray, column: IntArray, quantum: float, C: FloatArray, dx: FloatArray, now: FloatArray
+    y: float,
+    r: float,
+    noise: FloatArray,
+    column: IntArray,
+    quantum: float,
+    C: FloatArray,
+    dx: FloatArray,
+    now: FloatArray,
 ) -> None:
     """Measurement of every lane: the record plus the plant's deviation (2.1), with the record's own resolution."""
     for lane in range(dx.shape[1]):
@@ -74,8 +81,16 @@ def correct(
 
 @compiled
 def advance_device(
-    device: FloatArray, following: FloatArray, offset: FloatArray, inputs: FloatArray, k: int, u0: float,
-    A: FloatArray, B0: FloatArray, B1: FloatArray, delay: int,
+    device: FloatArray,
+    following: FloatArray,
+    offset: FloatArray,
+    inputs: FloatArray,
+    k: int,
+    u0: float,
+    A: FloatArray,
+    B0: FloatArray,
+    B1: FloatArray,
+    delay: int,
 ) -> None:
     """One period of the device's model, driven by the positions since the span began and by its load estimate."""
     n = len(B0)
@@ -122,7 +137,13 @@ def decide(
 
 @compiled
 def run_all(
-    now: FloatArray, rho: float, alpha: FloatArray, control: FloatArray, count: IntArray, pid: FloatArray, form: IntArray
+    now: FloatArray,
+    rho: float,
+    alpha: FloatArray,
+    control: FloatArray,
+    count: IntArray,
+    pid: FloatArray,
+    form: IntArray,
 ) -> None:
     """Run every controller (link at the actuator: the controller sees every sample)."""
     for lane in range(now.shape[1]):
@@ -133,8 +154,14 @@ def run_all(
 
 @compiled
 def run_asked(
-    now: FloatArray, updated: IntArray, rho: float, alpha: FloatArray, control: FloatArray, count: IntArray,
-    pid: FloatArray, form: IntArray,
+    now: FloatArray,
+    updated: IntArray,
+    rho: float,
+    alpha: FloatArray,
+    control: FloatArray,
+    count: IntArray,
+    pid: FloatArray,
+    form: IntArray,
 ) -> None:
     """Run the controllers that got a message, or may run without one, on the measurement they last received."""
     for lane in range(now.shape[1]):
@@ -170,8 +197,16 @@ def remember(now: FloatArray, sent: FloatArray, since: IntArray, updated: IntArr
 
 @compiled
 def note(
-    u: float, now: FloatArray, updated: IntArray, control: FloatArray, count: IntArray, past: FloatArray, inputs: FloatArray,
-    out_y: FloatArray, out_u: FloatArray, out_updated: Any,
+    u: float,
+    now: FloatArray,
+    updated: IntArray,
+    control: FloatArray,
+    count: IntArray,
+    past: FloatArray,
+    inputs: FloatArray,
+    out_y: FloatArray,
+    out_u: FloatArray,
+    out_updated: Any,
 ) -> None:
     """Write the sample down: row views of the histories and of the results."""
     for lane in range(len(updated)):

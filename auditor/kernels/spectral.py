@@ -19,17 +19,9 @@ from typing import NamedTuple
 import numpy as np
 
 from auditor.arrays import ComplexArray, FloatArray
-from auditor.kernels import zero_order_hold as Z
+from auditor.kernels import points
 from auditor.kernels.jit import compiled
-
-# Entries of the load: where it joins the loop.
-AT_INPUT = 0
-AT_OUTPUT = 1
-AFTER_SHORT_LAGS = 2  # only the long lag follows
-AFTER_LONG_LAG = 3  # only the m equal lags follow
-BETWEEN_SHORT_LAGS = 4  # the long lag and m // 2 equal lags follow
-AT_BOTH_ENDS = 5  # AR(1) load at the input, random walk at the output
-ENTRIES = 6
+from auditor.kernels.zero_order_hold import difference_equation
 
 IMPOSSIBLE = -1e300
 """Stands for log 0; finite, so that differences of it stay numbers."""
@@ -125,24 +117,24 @@ def multiply_lag_power(pole: float, gain: float, times: int, cosine: FloatArray,
 def partial_power(x: FloatArray, m: int, entry: int, cosine: FloatArray, out: FloatArray) -> None:
     """|H|² of a load that joins mid-plant or at the output."""
     for k in range(len(out)):
-        out[k] = math.exp(2.0 * x[Z.LN_GAIN])
-    if entry == AFTER_SHORT_LAGS or entry == BETWEEN_SHORT_LAGS:
-        p = math.exp(x[Z.LN_POLE])
+        out[k] = math.exp(2.0 * x[points.LN_GAIN])
+    if entry in (points.AFTER_SHORT_LAGS, points.BETWEEN_SHORT_LAGS):
+        p = math.exp(x[points.LN_POLE])
         multiply_lag_power(math.exp(-p), -math.expm1(-p) / p, 1, cosine, out)
-    follow = m if entry == AFTER_LONG_LAG else (m // 2 if entry == BETWEEN_SHORT_LAGS else 0)
+    follow = m if entry == points.AFTER_LONG_LAG else (m // 2 if entry == points.BETWEEN_SHORT_LAGS else 0)
     if follow > 0:
-        rate = m / math.exp(x[Z.LN_LAGS])
+        rate = m / math.exp(x[points.LN_LAGS])
         multiply_lag_power(math.exp(-rate), -math.expm1(-rate), follow, cosine, out)
 
 
 @compiled
 def load_spectrum(x: FloatArray, entry: int, cosine: FloatArray, out: FloatArray, phi: FloatArray) -> None:
     """Phi = |H|² (1/|1 − φq|² + g/|1 − q|²) + R kv²; with entry 5 the walk joins at the output with power kv² g."""
-    squared_gain = math.exp(2.0 * x[Z.LN_GAIN])
-    pole = 1.0 - math.exp(x[Z.LN_CORNER])
-    walk = math.exp(x[Z.LN_WALK])
-    noise = math.exp(x[Z.LN_NOISE]) * squared_gain
-    if entry == AT_BOTH_ENDS:
+    squared_gain = math.exp(2.0 * x[points.LN_GAIN])
+    pole = 1.0 - math.exp(x[points.LN_CORNER])
+    walk = math.exp(x[points.LN_WALK])
+    noise = math.exp(x[points.LN_NOISE]) * squared_gain
+    if entry == points.AT_BOTH_ENDS:
         walk *= squared_gain
         for k in range(len(phi)):
             ar = out[k] / (1.0 + pole * pole - 2.0 * pole * cosine[k])
@@ -156,12 +148,12 @@ def load_spectrum(x: FloatArray, entry: int, cosine: FloatArray, out: FloatArray
 @compiled
 def respond(x: FloatArray, m: int, entry: int, bins: Bins, work: FloatArray) -> None:
     """Fill the workspace with G and Phi at `x`, structure m, load entry."""
-    d, a, b, load = Z.difference_equation(x, m)
+    d, a, b, load = difference_equation(x, m)
     polynomial(a, bins.cosine, bins.sine, work[_A_RE], work[_A_IM])
     polynomial(b, bins.cosine, bins.sine, work[_B_RE], work[_B_IM])
     divide(work[_B_RE], work[_B_IM], work[_A_RE], work[_A_IM], work[_G_RE], work[_G_IM])
     turn(work[_G_RE], work[_G_IM], bins.delay_cosine[d], bins.delay_sine[d])
-    if entry == AT_INPUT or entry == AT_BOTH_ENDS:
+    if entry in (points.AT_INPUT, points.AT_BOTH_ENDS):
         undelayed_power(load, bins, work)
     else:
         partial_power(x, m, entry, bins.cosine[1], work[_LOAD])

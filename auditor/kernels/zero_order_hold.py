@@ -16,24 +16,8 @@ import math
 import numpy as np
 
 from auditor.arrays import FloatArray
+from auditor.kernels import points
 from auditor.kernels.jit import compiled
-
-OSCILLATOR = 5
-"""Structure number of the oscillator; 0…4 are the lag chains with that many equal lags."""
-
-ZERO_DEAD_ZONE = 3.0
-"""Values of the zero's coordinate up to this mean "no zero"."""
-
-# Coordinates of a point in the space of plants and loads.
-LN_GAIN = 0  # ln kv
-LN_POLE = 1  # ln p; for the oscillator ln zeta
-LN_LAGS = 2  # ln T, the lags together; for the oscillator ln 1/w0
-DELAY = 3  # theta [base periods]
-LN_CORNER = 4  # ln(1 − phi) of the AR(1) load
-LN_WALK = 5  # ln g, power of the random walk against the AR(1) load
-LN_NOISE = 6  # ln R, power of the measurement noise, in units of kv²
-ZERO = 7  # zero with its dead zone
-COORDINATES = 8
 
 _TAYLOR_TERMS = 12
 
@@ -80,10 +64,10 @@ def exponential(M: FloatArray, t: float, lower: bool) -> FloatArray:
 @compiled
 def zero_of(coordinate: float) -> float:
     """Time constant of the zero, 0 inside the dead zone."""
-    if coordinate > ZERO_DEAD_ZONE:
-        return coordinate - ZERO_DEAD_ZONE
-    if coordinate < -ZERO_DEAD_ZONE:
-        return coordinate + ZERO_DEAD_ZONE
+    if coordinate > points.ZERO_DEAD_ZONE:
+        return coordinate - points.ZERO_DEAD_ZONE
+    if coordinate < -points.ZERO_DEAD_ZONE:
+        return coordinate + points.ZERO_DEAD_ZONE
     return 0.0
 
 
@@ -91,8 +75,8 @@ def zero_of(coordinate: float) -> float:
 def chain(x: FloatArray, m: int) -> tuple[FloatArray, FloatArray]:
     """Lag chain behind its input: matrix (m + 2, m + 2), input first, hence lower triangular; output row."""
     n = m + 2
-    p = math.exp(x[LN_POLE])
-    rate = m / math.exp(x[LN_LAGS])
+    p = math.exp(x[points.LN_POLE])
+    rate = m / math.exp(x[points.LN_LAGS])
     M = np.zeros((n, n))
     for i in range(1, m + 1):
         M[i, i] = -rate
@@ -102,39 +86,39 @@ def chain(x: FloatArray, m: int) -> tuple[FloatArray, FloatArray]:
     C = np.zeros(n)
     C[m + 1] = 1.0
     if m > 0:
-        z = zero_of(x[ZERO])
+        z = zero_of(x[points.ZERO])
         C[m + 1] = 1.0 - z * p
         C[m] = z
-    return M, C * math.exp(x[LN_GAIN])
+    return M, C * math.exp(x[points.LN_GAIN])
 
 
 @compiled
 def oscillator(x: FloatArray) -> tuple[FloatArray, FloatArray]:
     """Oscillator behind its input: matrix (3, 3), input first; output row."""
-    w0 = math.exp(-x[LN_LAGS])
-    zeta = math.exp(x[LN_POLE])
+    w0 = math.exp(-x[points.LN_LAGS])
+    zeta = math.exp(x[points.LN_POLE])
     M = np.zeros((3, 3))
     M[1, 2] = 1.0
     M[2, 1] = -w0 * w0
     M[2, 2] = -2.0 * zeta * w0
     M[2, 0] = w0
     C = np.zeros(3)
-    C[1] = math.exp(x[LN_GAIN])
+    C[1] = math.exp(x[points.LN_GAIN])
     return M, C
 
 
 @compiled
 def denominator(x: FloatArray, m: int, E: FloatArray) -> FloatArray:
     """a(q): the sampled poles are known for a chain; for the oscillator trace and determinant of its own part."""
-    if m == OSCILLATOR:
+    if m == points.OSCILLATOR:
         return np.array([1.0, -(E[1, 1] + E[2, 2]), E[1, 1] * E[2, 2] - E[1, 2] * E[2, 1]])
     a = np.zeros(m + 2)
     a[0] = 1.0
-    pole = math.exp(-math.exp(x[LN_POLE]))
+    pole = math.exp(-math.exp(x[points.LN_POLE]))
     for i in range(m + 1):
         for j in range(i + 1, 0, -1):
             a[j] -= pole * a[j - 1]
-        pole = math.exp(-m / math.exp(x[LN_LAGS]))
+        pole = math.exp(-m / math.exp(x[points.LN_LAGS]))
     return a
 
 
@@ -165,11 +149,11 @@ def numerator(a: FloatArray, E: FloatArray, C: FloatArray, first: FloatArray, se
 @compiled
 def difference_equation(x: FloatArray, m: int) -> tuple[int, FloatArray, FloatArray, FloatArray]:
     """Return d, a(q), b(q) and load(q) of the plant at `x` with structure m; all three have the same length."""
-    lower = m != OSCILLATOR
+    lower = m != points.OSCILLATOR
     M, C = chain(x, m) if lower else oscillator(x)
     n = len(C)
-    d = int(math.floor(x[DELAY]))
-    f = x[DELAY] - d
+    d = math.floor(x[points.DELAY])
+    f = x[points.DELAY] - d
     early = exponential(M, f, lower)
     late = exponential(M, 1.0 - f, lower)
     whole = np.empty((n, n))

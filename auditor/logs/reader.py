@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from types import MappingProxyType
-from typing import Any, TypeVar
+from typing import Any, TypeVar, cast
 
 import numpy as np
 import numpy.typing as npt
@@ -88,7 +88,7 @@ def _sealed(array: _Array) -> _Array:
 
 
 def _joined(pieces: Sequence[_Array]) -> _Array:
-    return pieces[0] if len(pieces) == 1 else np.concatenate(pieces)
+    return pieces[0] if len(pieces) == 1 else cast("_Array", np.concatenate(pieces))
 
 
 def _check_stated(source: LogSource) -> None:

@@ -20,6 +20,9 @@ from auditor.logs.order import Order
 from auditor.logs.runs import hold
 from auditor.loop import Signal
 
+_LARGEST = 1e100
+"""Numbers from here on are no values: their squares leave the range of doubles."""
+
 _FEWEST_LEVELS = {"setpoint": 10}
 
 
@@ -38,7 +41,7 @@ class Column:
 def read_column(log: Log, order: Order, signal: Signal, role: str) -> Column:
     """Return the usable engineering values of a signal per stamp, and what was not used."""
     raw = order.arrange(log.channels[str(signal.column)])
-    bad = ~np.isfinite(raw)
+    bad = ~(np.abs(raw) < _LARGEST)
     sentinel = sentinel_mask(raw, role == "measurement" and signal.low is None and signal.high is None)
     values = np.where(bad | sentinel, np.nan, raw) if bad.any() or sentinel.any() else raw
     if signal.scale != 1.0 or signal.offset != 0.0:

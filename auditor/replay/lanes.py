@@ -119,7 +119,7 @@ def _device(bench: Bench, rule: Rule) -> tuple[FloatArray, FloatArray, FloatArra
 
 
 def unit_response(plant: Plant, samples: int) -> float:
-    """Response of the plant, without its delay, to a unit input after `samples` periods [measurement / actuator unit]."""
+    """Response of the plant, without its delay, to a unit input after `samples` periods [unit / actuator unit]."""
     x = np.zeros(plant.order)
     for _ in range(samples):
         x = plant.A @ x + plant.B0 + plant.B1
@@ -136,4 +136,4 @@ def diverged(lanes: Lanes, bench: Bench) -> npt.NDArray[np.bool_]:
     return np.asarray(~np.all(away < scale, axis=0))
 
 
-__all__ = ["NEVER", "R", "Lanes", "diverged", "guards", "replay_lanes", "unit_response"]
+__all__ = ["NEVER", "Lanes", "R", "diverged", "guards", "replay_lanes", "unit_response"]

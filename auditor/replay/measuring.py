@@ -25,7 +25,13 @@ STRETCH_LIMIT = 0.05
 
 
 def totals(
-    y: FloatArray, u: FloatArray, updated: object, record: Record, controller: Pid, limits: Limits, spans: Sequence[Span]
+    y: FloatArray,
+    u: FloatArray,
+    updated: object,
+    record: Record,
+    controller: Pid,
+    limits: Limits,
+    spans: Sequence[Span],
 ) -> FloatArray:
     """Sum over the samples of `spans`, for every lane; rows as in `auditor.kernels.measures`.
 

@@ -90,9 +90,7 @@ def _finer_than_log(bench: Bench, lanes: Mapping[str, FloatArray]) -> str | None
     )
 
 
-def relative_width(
-    intervals: Mapping[str, tuple[float, float]], lanes: Mapping[str, FloatArray], draws: int
-) -> float:
+def relative_width(intervals: Mapping[str, tuple[float, float]], lanes: Mapping[str, FloatArray], draws: int) -> float:
     """Larger relative width of the intervals of updates and RMS error."""
     widths = []
     for name in ("updates", "rms_error"):
@@ -102,9 +100,7 @@ def relative_width(
     return max(widths)
 
 
-def _too_wide(
-    intervals: Mapping[str, tuple[float, float]], lanes: Mapping[str, FloatArray], draws: int
-) -> str | None:
+def _too_wide(intervals: Mapping[str, tuple[float, float]], lanes: Mapping[str, FloatArray], draws: int) -> str | None:
     width = relative_width(intervals, lanes, draws)
     if width <= WIDEST:
         return None
@@ -116,8 +112,6 @@ def _too_wide(
     )
 
 
-def trust_of_width(
-    lanes: Mapping[str, FloatArray], intervals: Mapping[str, tuple[float, float]], draws: int
-) -> str:
+def trust_of_width(lanes: Mapping[str, FloatArray], intervals: Mapping[str, tuple[float, float]], draws: int) -> str:
     """Trust of one answer from the width of its own interval: within 5 % good, within 50 % limited."""
     return "good" if relative_width(intervals, lanes, draws) <= GOOD_WIDTH else "limited"

@@ -13,7 +13,9 @@ from auditor.rules.base import Rule, SettingSpec
 
 
 @rule
-def fires(now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any) -> None:
+def fires(
+    now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any
+) -> None:
     """h Σ |e| since the last update > area, or |e − e_s| > delta; settings are (area, h, delta)."""
     for lane in range(len(since)):
         before = memory[0, lane] if since[lane] > 1 else 0.0

@@ -13,7 +13,9 @@ from auditor.rules.base import Rule, SettingSpec
 
 
 @rule
-def fires(now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any) -> None:
+def fires(
+    now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any
+) -> None:
     """|x − L| ≥ spacing + hysteresis; then L moves by whole spacings towards x. A span starts on the nearest line."""
     for lane in range(len(since)):
         x = now[R.WATCHED, lane]
@@ -33,7 +35,9 @@ RULE = Rule(
     loses="Noise on a line repeats messages unless hysteresis is wider than the noise.",
     settings=(
         SettingSpec(name="spacing", unit="measurement", meaning="distance between lines"),
-        SettingSpec(name="hysteresis", unit="measurement", meaning="further travel asked for", default=0.0, closed=True),
+        SettingSpec(
+            name="hysteresis", unit="measurement", meaning="further travel asked for", default=0.0, closed=True
+        ),
         SettingSpec(name="origin", unit="measurement", meaning="where one line lies", default=0.0, above=-np.inf),
     ),
     fires=fires,

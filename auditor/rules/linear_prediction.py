@@ -14,7 +14,9 @@ _SLOPE, _NEXT, _RING = 0, 1, 2
 
 
 @rule
-def fires(now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any) -> None:
+def fires(
+    now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any
+) -> None:
     """|e − (e_s + slope_s · m h)| > delta; slope_s is the mean slope over the window before the last update.
 
     Settings are (delta, window in samples). The slope is kept per sample, so h drops out.

@@ -11,7 +11,9 @@ from auditor.rules.base import Rule, SettingSpec
 
 
 @rule
-def fires(now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any) -> None:
+def fires(
+    now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any
+) -> None:
     """|y − ŷ| > delta."""
     for lane in range(len(since)):
         out[lane] = 1 if abs(now[R.MEASUREMENT, lane] - now[R.PREDICTED, lane]) > settings[0, lane] else 0

@@ -10,7 +10,9 @@ from auditor.rules.base import Rule, SettingSpec
 
 
 @rule
-def fires(now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any) -> None:
+def fires(
+    now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any
+) -> None:
     """m ≥ every; the first gap of a span is `phase` samples, so that every phase of the clock can be replayed."""
     for lane in range(len(since)):
         begun = 0.0 if since[lane] == 0 else memory[0, lane]
@@ -28,7 +30,9 @@ RULE = Rule(
     loses="Spends updates while nothing happens and is late when something does.",
     settings=(
         SettingSpec(name="every", unit="samples", meaning="samples between updates", above=1, closed=True),
-        SettingSpec(name="phase", unit="samples", meaning="first gap of a span, 0: `every`", default=0, above=0, closed=True),
+        SettingSpec(
+            name="phase", unit="samples", meaning="first gap of a span, 0: `every`", default=0, above=0, closed=True
+        ),
     ),
     fires=fires,
     pack=lambda values, period: (values["every"], values["phase"] or values["every"]),

@@ -11,7 +11,9 @@ from auditor.rules.base import Rule, SettingSpec
 
 
 @rule
-def fires(now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any) -> None:
+def fires(
+    now: FloatArray, sent: FloatArray, since: IntArray, memory: FloatArray, settings: FloatArray, out: Any
+) -> None:
     """h Σ |e − e_s| since the last update > area; settings are (area, h)."""
     for lane in range(len(since)):
         before = memory[0, lane] if since[lane] > 1 else 0.0

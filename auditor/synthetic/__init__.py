@@ -1,5 +1,6 @@
 """Loops whose truth is known, for tests, docs and the sample logs."""
 
+from auditor.synthetic.loads import between, drift, fine_times, opened, pulses
 from auditor.synthetic.simulation import (
     Decide,
     Simulation,
@@ -14,8 +15,13 @@ __all__ = [
     "Decide",
     "Simulation",
     "Truth",
+    "between",
     "chain",
     "clock",
+    "drift",
+    "fine_times",
+    "opened",
+    "pulses",
     "resonance",
     "send_on_area",
     "send_on_delta",

@@ -49,3 +49,11 @@ def test_without_a_band_there_is_no_flag() -> None:
     bench = Bench(limits=replace(LIMITS, band=None))
     bench.y[100:200] = 1.0
     assert bench.flags(band) == ()
+
+
+def test_rounding_at_the_band_is_no_excursion() -> None:
+    y = plain_record().y.copy()
+    y[100:130] = 2.0 - 0.05
+    bench = Bench(record=plain_record(y=y), limits=replace(LIMITS, band=2.0 - y[100]))
+    bench.y[100:130] = y[100] - 1e-12
+    assert bench.flags(band) == ()

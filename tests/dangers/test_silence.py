@@ -83,3 +83,9 @@ def test_without_limits_silence_is_nobodys_danger() -> None:
     bench = silent(100, 399, limits=replace(LIMITS, max_silence=None, band=None))
     bench.y[:] = np.inf
     assert bench.flags(silence) == ()
+
+
+def test_rounding_at_the_band_needs_no_answer() -> None:
+    bench = silent(100, 120)
+    bench.y[105:115] = 1.95 - 1e-12
+    assert bench.flags(silence) == ()

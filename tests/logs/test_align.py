@@ -327,6 +327,74 @@ def test_disturbances_are_held_and_never_missing():
     assert record.valid.all()
 
 
+# anything at all
+
+
+DAMAGES = ("drop", "shuffle", "repeat", "set back", "jitter", "empty", "flat", "huge", "round", "manual")
+
+
+def damaged(log, kind: str, generator):
+    """Return the log with one more damage at a random place."""
+    rows = len(log.time)
+    first = int(generator.integers(0, rows))
+    there = np.arange(rows)[first : first + int(generator.integers(1, 60))]
+    name = str(generator.choice(["level", "target", "gate"]))
+    values, time, cells = log.channels[name].copy(), log.time.copy(), log.texts["mode"].copy()
+    if kind == "drop":
+        return with_rows(log, np.delete(np.arange(rows), there))
+    if kind == "shuffle":
+        return with_rows(log, np.r_[0:first, generator.permutation(np.arange(first, rows))])
+    if kind == "repeat":
+        return with_rows(log, np.sort(np.r_[0:rows, there]))
+    if kind == "set back":
+        time[first:] -= int(generator.integers(0, 100 * 60)) * NS
+        return replace(log, time=time)
+    if kind == "jitter":
+        return replace(log, time=time + generator.integers(-20 * NS, 20 * NS, rows))
+    if kind == "manual":
+        cells[there] = generator.choice(["MAN", "", None, "1"])
+        return with_mode(log, cells)
+    values[there] = {"empty": np.nan, "flat": values[first], "huge": generator.choice([9999.0, np.inf, 1e300])}.get(
+        kind, np.round(values[there], 1)
+    )
+    return with_channel(log, **{name: values})
+
+
+@settings(max_examples=150, deadline=None)
+@given(
+    seed=st.integers(0, 2**32 - 1),
+    rows=st.sampled_from([2, 3, 60, 400]),
+    damages=st.lists(st.sampled_from(DAMAGES), max_size=6),
+    stored=st.sampled_from([None, "every", "on-change"]),
+    period=st.sampled_from([20.0, 60.0, 150.0]),
+)
+def test_whatever_the_damage_the_record_keeps_its_promises(seed, rows, damages, stored, period):
+    generator = np.random.default_rng(seed)
+    log = with_mode(pool_log(rows=rows, seed=seed % 100), np.full(rows, "AUTO", dtype=object))
+    for kind in damages:
+        log = damaged(log, kind, generator) if len(log.time) else log
+    loop = pool_loop(period, measurement=Signal(column="level", low=-1e6, high=1e6, stored=stored), mode=AUTOMATIC)
+    record, refusal = None, ""
+    try:
+        record = align(log, loop)
+    except LogError as error:
+        refusal = str(error)
+    if record is None:
+        assert len(np.unique(log.time)) < 2 or "period" in refusal
+        return
+    inside = record.in_span
+    for values in (record.y, record.r, record.u):
+        assert np.isfinite(values[inside | record.valid]).all()
+    np.testing.assert_array_equal(record.valid, record.cause == 0)
+    assert not (inside & np.isin(record.cause, [CAUSES.index("manual"), CAUSES.index("excluded")])).any()
+    assert sum(record.lost_hours.values()) == pytest.approx(np.sum(~inside) * period / 3600)
+    recorded = log.channels["level"]
+    assert np.isin(record.y[inside], recorded).all(), "nothing averaged, nothing interpolated, nothing invented"
+    for finding in record.findings:
+        assert finding.count > 0
+        assert finding.start is None or finding.start <= finding.end
+
+
 # refusals
 
 

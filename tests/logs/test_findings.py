@@ -385,6 +385,13 @@ def test_stuck_is_judged_by_the_signal_itself():
     assert stuck_runs(np.full(100, 1.0))[0].tolist() == [0]
 
 
+def test_resting_at_an_end_again_and_again_is_not_stuck():
+    days = np.concatenate([np.r_[np.zeros(50), 1 + np.random.default_rng(k).uniform(0, 1, 50)] for k in range(10)])
+    assert len(stuck_runs(days)[0]) == 0, "nought every night"
+    days[260:290] = 1.5
+    assert stuck_runs(days)[0].tolist() == [260]
+
+
 def test_a_measurement_that_never_moves_stops_the_answer():
     found = findings_of(*spoiled("level", slice(None), 2.0), "stuck")
     assert found[0].weight == "stops the answer"

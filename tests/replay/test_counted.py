@@ -15,7 +15,14 @@ from auditor.replay.counted import by_month, counted_spans, samples, split
 def record(n: int, *spans: Span, period: float = 10.0, start: int = 0) -> Record:
     zeros = np.zeros(n)
     return Record(
-        period=period, start=start, y=zeros, r=zeros, u=zeros, w=np.zeros((0, n)), valid=np.ones(n, dtype=bool), spans=spans
+        period=period,
+        start=start,
+        y=zeros,
+        r=zeros,
+        u=zeros,
+        w=np.zeros((0, n)),
+        valid=np.ones(n, dtype=bool),
+        spans=spans,
     )
 
 

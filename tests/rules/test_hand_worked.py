@@ -13,7 +13,7 @@ from auditor.rules.base import Rule
 
 def drive(rule: Rule, values: dict[str, float], x: list[float], *, period: float = 1.0, y_hat: list[float] | None = None,
           e: list[float] | None = None) -> list[int]:  # fmt: skip
-    """Feed a rule's compiled function sample by sample, without a loop around it; return where it asks to update."""
+    """Feed a rule's compiled function sample by sample; return where it asks to update."""
     values = rule.complete(values)
     packed = np.ascontiguousarray(np.array(rule.pack(values, period), dtype=float)[:, None])
     memory = np.zeros((rule.memory_rows(values, period), 1))

@@ -21,7 +21,7 @@ def find(seen: Evidence) -> list[Finding]:
             kind="fine-log",
             start=None,
             end=None,
-            count=len(seen.beats) - len(seen.cause),
+            count=len(seen.beats),
             detail=f"a row every {duration(seen.log_step)}, {number(seen.period / seen.log_step, 2)} per base "
             f"period of {duration(seen.period)}",
             effect=f"the last row at or before each instant used, nothing averaged; {_PHASE[seen.phase_from]}",

@@ -32,7 +32,7 @@ def _held(trace: Trace, seen: Evidence) -> Finding | None:
         kind="on-change",
         start=seen.time_at(int(at[0])),
         end=seen.time_at(int(at[-1])),
-        count=int(filled.sum()),
+        count=len(at),
         detail=f"no stored value at {percent(len(at) / len(trace.state), 2)} of the samples" + before,
         effect="the last stored value held, however long, as it stands until changed" + _leading(trace, missing),
         signal=trace.name,

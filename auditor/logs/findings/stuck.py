@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from auditor.arrays import FloatArray, IntArray
+from auditor.arrays import BoolArray, FloatArray, IntArray
 from auditor.logs.findings.base import Finding
 from auditor.logs.findings.evidence import Evidence, Trace
 from auditor.logs.findings.wording import moment, plural
@@ -13,6 +13,7 @@ from auditor.text import duration, percent
 _LONGEST_USUAL = 0.99
 _TIMES_USUAL = 10
 _FEWEST = 20
+_RESTS = 3
 _MUCH = 0.01
 
 
@@ -33,10 +34,25 @@ def stuck_runs(values: FloatArray) -> tuple[IntArray, IntArray]:
         return none, none
     starts = np.concatenate(([0], np.flatnonzero(moved) + 1))
     lengths = np.diff(np.append(starts, len(values)))
-    others = np.delete(lengths, np.argmax(lengths))
+    free = ~_at_rest(values[starts], lengths)
+    starts, lengths = starts[free], lengths[free]
+    others = np.sort(lengths)[:-1]
     usual = float(np.quantile(others, _LONGEST_USUAL)) if len(others) else 1.0
     long = lengths > max(_FEWEST, _TIMES_USUAL * usual)
     return starts[long], starts[long] + lengths[long] - 1
+
+
+def _at_rest(levels: FloatArray, lengths: IntArray) -> BoolArray:
+    """Return True for the runs at an end of the signal's range where it rests again and again: nothing is stuck there.
+
+    A flow that is nought every night, or a transmitter at the end of its range, is what it looks like.
+    """
+    rest = np.zeros(len(levels), dtype=np.bool_)
+    for end in (levels.min(), levels.max()):
+        there = levels == end
+        if np.sum(there & (lengths > _FEWEST)) >= _RESTS:
+            rest |= there
+    return rest
 
 
 def find(seen: Evidence) -> list[Finding]:

@@ -28,14 +28,14 @@ def draw(axes: Axes, content: Content) -> Axes:
     """Draw the record's whole time as one strip, and what was found in it as ticks below."""
     record = content.audit.record
     reach = [Span(0, len(record))]
-    for spans, color in ((reach, style.HAIR), (record.spans, style.CURVES[2]), (content.audit.counted, style.REPLAY)):
+    for spans, color in ((reach, style.HAIR), (record.spans, style.PALE), (content.audit.counted, style.REPLAY)):
         axes.broken_barh(_bars(record, spans), (0.0, 1.0), facecolors=color, linewidth=0)
     found = [finding.start / 86_400e9 for finding in record.findings if finding.start is not None]
     axes.vlines(found, -0.55, -0.15, color=style.DANGER, linewidth=0.8)
     axes.set(yticks=[], ylim=(-0.6, 1.0))
     axes.spines["left"].set_visible(False)
     clock_axis(axes, record)
-    words = [("counted", style.REPLAY), ("warm-up or too short", style.CURVES[2]), ("not used", style.RECORD)]
+    words = [("counted", style.REPLAY), ("warm-up or too short", style.PALE), ("not used", style.RECORD)]
     return heading(axes, [*words, ("findings", style.DANGER)])
 
 

@@ -30,12 +30,12 @@ def draw(axes: Axes, answers: StepResponses, unit: str) -> Axes:
     size, name = next((s for s in _SCALES if answers.seconds[-1] >= 3 * s[0]), _SCALES[-1])
     at = answers.seconds / size
     low, high = np.quantile(answers.all, (0.05, 0.95), axis=0)
-    axes.fill_between(at, low, high, color=style.CURVES[2], alpha=0.35, linewidth=0)
-    axes.plot(at, answers.all.T, color=style.CURVES[2], linewidth=0.4, alpha=0.7)
+    axes.fill_between(at, low, high, color=style.PALE, alpha=0.35, linewidth=0)
+    axes.plot(at, answers.all.T, color=style.PALE, linewidth=0.4, alpha=0.7)
     axes.plot(at, answers.likeliest, color=style.REPLAY, linewidth=1.8)
     axes.axhline(0.0, color=style.SOFT, linewidth=0.5)
     axes.set_xlabel(f"time since the step [{name}]")
     axes.set_ylabel(style.with_unit("measurement", unit))
     axes.set_xlim(0, at[-1])
-    words = [("likeliest plant", style.REPLAY), (f"all {len(answers.all)} likely plants, 5–95 % shaded", style.CURVES[2])]
+    words = [("likeliest plant", style.REPLAY), (f"all {len(answers.all)} likely plants, 5–95 % shaded", style.PALE)]
     return heading(axes, words)

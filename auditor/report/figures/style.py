@@ -22,8 +22,10 @@ DANGER = "#a8321c"
 WATCH = "#d99a1c"
 ALLOWED = "#e9eee6"
 
-# Neighbouring members differ in lightness as well as hue, so that they stay apart without colour.
-CURVES = ("#0a5c84", "#c8642c", "#5aa9c8", "#6b3f78", "#2f7d57", "#d39aa8", "#8c7420", "#1b2f4b")
+PALE = "#4a97ba"
+
+# Chosen so that every two stay apart for readers without one of the three cone types, and can be read on the panel.
+CURVES = ("#0a5c84", "#a63618", "#8c9917", "#9a59c8", "#7f413e", "#738fa4", "#c7796f", "#521d89")
 MARKERS = ("o", "s", "^", "D", "v", "P", "X", "h")
 
 WIDTH = 7.2
