@@ -10,7 +10,9 @@ from importlib import import_module
 from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
-__version__ = "0.1.0"
+from auditor.version import VERSION
+
+__version__ = VERSION
 
 _HOME = {
     "read_loop": "auditor.loopfile",

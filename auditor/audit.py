@@ -8,7 +8,6 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from datetime import UTC, datetime
 
-import auditor
 from auditor.controllers.pid import Pid
 from auditor.dangers.interval import Flag
 from auditor.errors import CannotAnswerError
@@ -27,6 +26,7 @@ from auditor.replay.measuring import baseline
 from auditor.replay.types import Measures, Replay
 from auditor.sweep import Parts, make_parts, with_series
 from auditor.verdict import CAUTIONS, Case, Recommendation, Verdict, decide, recommend
+from auditor.version import VERSION
 
 PACKAGES = ("numpy", "scipy", "pandas", "pyarrow", "numba", "matplotlib", "pydantic", "jinja2", "typer")
 
@@ -209,7 +209,7 @@ def _provenance(seed: int, command: str) -> Provenance:
     packages = {"python": platform.python_version()}
     packages.update({name: importlib.metadata.version(name) for name in PACKAGES})
     return Provenance(
-        auditor_version=auditor.__version__,
+        auditor_version=VERSION,
         packages=packages,
         seed=seed,
         created=datetime.now(UTC).isoformat(timespec="seconds").replace("+00:00", "Z"),

@@ -126,14 +126,14 @@ def aeration(seed: int = 1) -> Scenario:
     day = np.exp(-(((clock - 10) / 2.6) ** 2)) + 0.8 * np.exp(-(((clock - 20) / 2.8) ** 2))
     # Rain dilutes what comes in, but it comes in gusts.
     rain = between(hours, 49.0, 9.0) * (1 - np.exp(-(hours - 49.0).clip(0) / 1.5))
-    uptake = 9.0 * (day - day.mean()) - 6.0 * rain + 8.0 * (1 + 0.8 * rain) * drift(rng, hours, 0.25)
+    uptake = 7.0 * (day - day.mean()) - 4.0 * rain + 5.5 * (1 + 0.8 * rain) * drift(rng, hours, 0.25)
     # While the probe is wiped the blower stays at a fixed speed.
     manual = np.full(count, np.nan)
-    manual[CLEANING] = 60.0
-    tank = chain((45.0, 420.0, 60.0), gain=0.075, delay_s=17.0, load_stage=1, load_gain=-0.075)
+    manual[CLEANING] = 58.0
+    tank = chain((45.0, 420.0, 60.0), gain=0.105, delay_s=17.0, load_stage=1, load_gain=-0.105)
     return Scenario(
         truth=tank.resting(2.0, 55.0, lambda speed: 100.0 * (max(speed, 0.0) / 100) ** 0.8),
-        controller=Pid(gain=45.0, integral_time=300.0, integral="backward", low=20.0, high=100.0),
+        controller=Pid(gain=32.0, integral_time=300.0, integral="backward", low=20.0, high=100.0),
         period=period,
         setpoint=np.full(count, 2.0),
         load=uptake,
@@ -163,7 +163,7 @@ def heat_station(seed: int = 1) -> Scenario:
     exchanger = chain((6.0, 32.0, 9.0), gain=0.55, delay_s=9.0, load_stage=1, load_gain=-1.0)
     return Scenario(
         truth=exchanger.resting(float(setpoint[0]), 55.0, lambda lift: 40.0 * 1.6 ** (lift / 40.0 - 1)),
-        controller=Pid(gain=4.2, integral_time=26.0, integral="backward", low=0.0, high=100.0, max_rate=1.5),
+        controller=Pid(gain=3.6, integral_time=27.0, integral="backward", low=0.0, high=100.0, max_rate=1.5),
         period=period,
         setpoint=setpoint,
         load=load - load.mean(),
@@ -182,18 +182,15 @@ def booster_pump(seed: int = 1) -> Scenario:
     flow = 12.0 + 0.5 * drift(rng, hours, 40.0 / 3600) + pulses(rng, hours, every=24 / 900, length=0.02)
     # The brigade opens and closes the same hydrant again and again, in about a second each time.
     for begin in np.arange(0.4, 5.8, 0.2) + rng.uniform(-0.06, 0.06, 27):
-        flow += 7.5 * opened(hours, begin, rng.uniform(0.02, 0.08), 1.0 / 3600)
+        flow += 10.0 * opened(hours, begin, rng.uniform(0.02, 0.08), 1.0 / 3600)
     loss = 0.0045 * flow**2
-    mains = chain((0.9, 4.0, 0.4), delay_s=0.6, load_stage=1, load_gain=-1.0)
+    mains = chain((1.0, 7.0, 0.5), delay_s=0.7, load_stage=1, load_gain=-1.0)
     return Scenario(
         truth=mains.resting(4.0, 70.0, lambda speed: 10.5 * (max(speed, 0.0) / 100) ** 2),
-        controller=Pid(gain=8.0, integral_time=4.0, integral="backward", low=30.0, high=100.0),
+        controller=Pid(gain=11.0, integral_time=7.0, integral="backward", low=30.0, high=100.0),
         period=period,
-        setpoint=stepped(
-            count,
-            4.0,
-            {6480: 4.1, 9360: 4.0, 15120: 4.2, 18000: 4.0, 23760: 4.15, 26640: 4.0, 35280: 4.1, 38160: 4.0},
-        ),
+        # The operator tries other pressures, every twenty minutes or so.
+        setpoint=stepped(count, 4.0, dict(zip(range(2700, count, 2700), (4.2, 4.0, 4.1, 4.0, 3.9) * 3, strict=True))),
         load=loss - loss.mean(),
         noise=rng.normal(0, 0.004, count),
         y_step=0.01,

@@ -259,6 +259,31 @@ def test_long_layout(tmp_path):
     assert loop.period == 60.0
 
 
+def test_newest_row_first_and_old_line_ends(tmp_path):
+    w = world(seed=16)
+    columns = [column[::-1] for column in (stamps(), cells(w["y"]), cells(w["r"]), cells(w["u"]))]
+    text = table(["time", "level", "target", "gate"], columns).replace("\n", "\r")
+    _, loop = drafted(tmp_path / "log.csv", text)
+    assert roles(loop) == ("level", "target", "gate")
+    assert loop.period == 60.0
+
+
+def test_spoiled_rows_and_a_footer_do_not_hide_the_clock(tmp_path):
+    w = world(seed=17)
+    times = [stamp if k % 40 else "no time" for k, stamp in enumerate(stamps())]
+    text = table(["time", "level", "target", "gate"], [times, cells(w["y"]), cells(w["r"]), cells(w["u"])])
+    _, loop = drafted(tmp_path / "log.csv", text + "End of export\n")
+    assert (loop.log.time, loop.log.timezone, loop.period) == ("time", None, 60.0)
+    assert roles(loop) == ("level", "target", "gate")
+
+
+def test_a_name_with_control_characters_stays_out_of_comments(tmp_path):
+    w = world()
+    text = table(["time", "level", "target", "ga\x07te", "q\x07"], [stamps(), *map(cells, w.values())])
+    _, loop = drafted(tmp_path / "log.csv", text)
+    assert loop.signals.actuator.column == "ga\x07te"
+
+
 def test_utf16_and_gzip(tmp_path):
     w = world()
     text = table(["time", "level", "target", "gate", "offtake"], [stamps(), *map(cells, w.values())])
@@ -348,6 +373,19 @@ def test_no_header_row(tmp_path):
     assert len(error.value.problems) == 4
 
 
+def test_nameless_time_column_and_a_name_that_stands_twice(tmp_path):
+    w = world()
+    log = tmp_path / "log.csv"
+    columns = [stamps(), cells(w["y"]), cells(w["r"]), cells(w["u"]), cells(w["w"])]
+    log.write_text(table(["", "level", "target", "gate", "gate"], columns))
+    made = draft(log)
+    assert made.value("log.time") == '""'
+    assert made.fill_in == ("signals.actuator.column",)
+    with pytest.raises(LoopFileError) as error:
+        read_draft(tmp_path, made)
+    assert [problem.what for problem in error.value.problems] == ["signals.actuator.column is empty"]
+
+
 def test_no_loop_to_see(tmp_path):
     log = tmp_path / "log.csv"
     log.write_text(table(["time", "level"], [stamps(), cells(world()["y"])]))
@@ -407,16 +445,15 @@ def test_every_guess_is_in_the_text_with_its_reason(tmp_path):
 
 @pytest.mark.parametrize("kind", ["lag", "integrator"])
 def test_roles_by_behaviour_alone(kind):
-    """Forty loops without names, gains of either sign: at most two wrong, and none of those called sure."""
-    wrong = 0
-    for seed in range(40):
+    """Loops without names, gains of either sign, actuators rounded to 0, 0.1 or 1 %: all roles found, most for sure."""
+    clear = 0
+    for seed in range(20):
         grid = _random_loop(kind, seed)
         found = find_roles([f"tag {n}" for n in range(5)], grid, np.ones(len(grid), dtype=bool))
-        if (found.measurement, found.setpoint, found.actuator) != (0, 1, 2):
-            wrong += 1
-            assert found.explained - found.next_best < 0.15
-    # 2 of 40: the loops whose actuator is rounded to 1 % while it moves by less than that.
-    assert wrong <= 2
+        assert (found.measurement, found.setpoint, found.actuator) == (0, 1, 2), seed
+        clear += found.clear
+    # Rounding to 1 % hides some of the law in about a third of the loops.
+    assert clear >= 14
 
 
 def _random_loop(kind: str, seed: int, rows: int = 1200) -> np.ndarray:

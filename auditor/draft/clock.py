@@ -76,10 +76,11 @@ def order_of(ns: IntArray, starts: BoolArray) -> Order:
 
 
 def gaps_of(ns: IntArray, starts: BoolArray) -> FloatArray:
-    """Return the gaps between neighbouring rows that both have a time [s]."""
+    """Return the gaps between neighbouring rows that both have a time [s], turned round when the newest row is first."""
     known = ns != stamps.NO_TIME
     both = known[1:] & known[:-1] & ~starts[1:]
-    return np.asarray((ns[1:] - np.where(known[:-1], ns[:-1], 0))[both] / 1e9)
+    gaps = np.asarray((ns[1:] - np.where(known[:-1], ns[:-1], 0))[both] / 1e9)
+    return -gaps if 2 * np.count_nonzero(gaps < 0) > len(gaps) else gaps
 
 
 def find_clock(columns: Sequence[Column], starts: BoolArray) -> Clock | None:

@@ -15,6 +15,7 @@ from auditor.draft.words import is_unit, unit_of
 LEAST_SHARE = 0.7
 LEAST_CELLS = 10
 MOST_STATES = 12
+LARGEST = 1e60
 
 _NUMBER = r"^[-+]?(\d+\.?\d*|\.\d+)([eE][-+]?\d+)?$"
 
@@ -102,7 +103,7 @@ def _column(name: str, line_unit: str, cells: pa.ChunkedArray, comma: bool) -> C
 
 
 def numbers_of(cells: pa.ChunkedArray, comma: bool) -> FloatArray:
-    """Return the cells as numbers, NaN where they are none.
+    """Return the cells as numbers, NaN where they are none (or beyond `LARGEST`, which no signal is).
 
     Parameters
     ----------
@@ -111,15 +112,19 @@ def numbers_of(cells: pa.ChunkedArray, comma: bool) -> FloatArray:
         True when a comma is the decimal sign.
     """
     if pa.types.is_floating(cells.type) or pa.types.is_integer(cells.type) or pa.types.is_decimal(cells.type):
-        return np.asarray(cells.cast(pa.float64()).to_numpy(), dtype=np.float64)
-    if not pa.types.is_string(cells.type) and not pa.types.is_large_string(cells.type):
+        numbers = cells.cast(pa.float64())
+    elif pa.types.is_string(cells.type) or pa.types.is_large_string(cells.type):
+        numbers = _from_text(pc.utf8_trim_whitespace(cells), comma)
+    else:
         return np.full(len(cells), np.nan)
-    text = pc.utf8_trim_whitespace(cells)
+    found = np.asarray(numbers.to_numpy(), dtype=np.float64)
+    return np.where(np.abs(found) <= LARGEST, found, np.nan)
+
+
+def _from_text(text: pa.ChunkedArray, comma: bool) -> pa.ChunkedArray:
     if comma:
         text = pc.replace_substring(text, ",", ".")
     try:
-        numbers = text.cast(pa.float64())
+        return text.cast(pa.float64())
     except pa.ArrowInvalid:
-        numbers = pc.if_else(pc.match_substring_regex(text, _NUMBER), text, None).cast(pa.float64())
-    found = np.asarray(numbers.to_numpy(), dtype=np.float64)
-    return np.where(np.isfinite(found), found, np.nan)
+        return pc.if_else(pc.match_substring_regex(text, _NUMBER), text, None).cast(pa.float64())

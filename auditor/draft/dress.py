@@ -68,7 +68,7 @@ def look_at(text: str, encoding: str) -> Dress | None:
     Parameters
     ----------
     text : str
-        The decoded head of the log.
+        The decoded head of the log, lines ending in a line feed.
     encoding : str
         The encoding it was decoded with.
 
@@ -77,7 +77,7 @@ def look_at(text: str, encoding: str) -> Dress | None:
     Dress or None
         None when no delimiter gives a table.
     """
-    lines = re.split(r"\r\n|\n|\r", text)[:LINES_LOOKED_AT]
+    lines = text.split("\n")[:LINES_LOOKED_AT]
     best = max(DELIMITERS, key=lambda delimiter: _fit(lines, delimiter))
     if _fit(lines, best) <= 0:
         return None

@@ -113,10 +113,16 @@ def _dress_guesses(found: Survey) -> Iterator[Guess]:
 
 
 def _column(found: Survey, key: str, name: str, reason: str, sure: str) -> Guess:
-    if found.nameless:
-        reason = f"{name} of the log ({reason}), but the log has no header row: add one, then name the column here"
-        return Guess(key=key, value="", reason=reason, sure=sure)
-    return Guess(key=key, value=quoted(name), reason=reason, sure=sure)
+    own = found.written(name)
+    if own:
+        return Guess(key=key, value=quoted(own), reason=reason, sure=sure)
+    if own is None:
+        reason = f"{name} ({reason}), but two columns have this name: rename one of them"
+    elif key == "log.time" and any(found.peek.written):
+        return Guess(key=key, value='""', reason=f"the column without a name; {reason}", sure=sure)
+    else:
+        reason = f"{name} of the log ({reason}), but it has no name there: give it one in the header row"
+    return Guess(key=key, value="", reason=reason, sure=sure)
 
 
 def signal_guesses(found: Survey) -> Iterator[Guess]:
@@ -132,10 +138,10 @@ def signal_guesses(found: Survey) -> Iterator[Guess]:
 
 
 def _trust(roles: Roles, worded: bool) -> str:
-    margin = roles.explained - roles.next_best
-    if roles.explained > 0.9 and margin > 0.15:
+    if roles.clear:
         return SURE
-    return LIKELY if (roles.explained > 0.7 and margin > 0.1) or worded else CHECK
+    ahead = roles.explained > 0.7 and roles.explained - roles.next_best > 0.1
+    return LIKELY if ahead or worded else CHECK
 
 
 def _measurement(found: Survey, roles: Roles, columns: Sequence[Column]) -> Iterator[Guess]:
@@ -207,7 +213,7 @@ def _actuator(found: Survey, roles: Roles, columns: Sequence[Column]) -> Iterato
 def mode_guesses(found: Survey) -> Iterator[Guess]:
     """Guess `signals.mode`."""
     mode = found.mode
-    if mode is None or found.nameless:
+    if mode is None or not found.written(mode.column):
         return
     seen = ", ".join(mode.states)
     how = "one of them is a word for automatic" if mode.by_word else "the name speaks of a mode"

@@ -55,7 +55,7 @@ def page(log: str, whole: bool, guesses: Sequence[Guess], hints: Mapping[str, st
         Columns without a role.
     """
     fill = _FILL if any(guess.fill_in for guess in guesses) else _NO_FILL
-    head = _HEAD.format(log=log, part="" if whole else " (its beginning, middle and end)", fill=fill)
+    head = _HEAD.format(log=_printable(log), part="" if whole else " (its beginning, middle and end)", fill=fill)
     tables = [_table(name, [g for g in guesses if g.key.rpartition(".")[0] == name]) for name in _TABLES]
     return "\n".join([head, *filter(None, [*tables, _disturbances(others), _CONTROLLER, _limits(hints), _ACCEPT])])
 
@@ -73,8 +73,13 @@ def _lines(guess: Guess) -> str:
 
 
 def _wrapped(text: str) -> str:
-    flat = " ".join(text.split())
+    flat = _printable(" ".join(text.split()))
     return "".join(f"# {line}\n" for line in textwrap.wrap(flat, WIDTH - 2, break_long_words=False))
+
+
+def _printable(text: str) -> str:
+    """Replace control characters, which a TOML comment may not hold."""
+    return "".join(sign if sign.isprintable() else "?" for sign in text)
 
 
 def _disturbances(others: Sequence[Column]) -> str:

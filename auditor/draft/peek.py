@@ -36,7 +36,9 @@ class Peek:
     ----------
     parts : tuple of pyarrow.Table
         One to three parts in the order of time, with the same columns in each.
-    units : mapping by position, tuple of str
+    written : tuple of str
+        The columns' names as the log writes them: some may be empty, or stand twice.
+    units : tuple of str
         The units line, one per column; empty texts when there is none.
     dress : Dress or None
         None for Parquet.
@@ -45,13 +47,14 @@ class Peek:
     """
 
     parts: tuple[pa.Table, ...]
+    written: tuple[str, ...]
     units: tuple[str, ...]
     dress: Dress | None
     whole: bool
 
     @property
     def names(self) -> list[str]:
-        """The columns' names as the log writes them."""
+        """The columns' names here: those of the log, with one made up where it is missing or stands twice."""
         return list(self.parts[0].column_names)
 
 
@@ -103,7 +106,7 @@ def _parquet(files: Sequence[Path], whole: bool) -> Peek:
         raise LogError(_refusal(files[0], "the log is empty", "no row", "export it again"))
     common = [name for name in parts[0].column_names if all(name in part.column_names for part in parts)]
     parts = [part.select(common) for part in parts]
-    return Peek(parts=tuple(parts), units=("",) * len(common), dress=None, whole=complete)
+    return Peek(parts=tuple(parts), written=tuple(common), units=("",) * len(common), dress=None, whole=complete)
 
 
 def _text(files: Sequence[Path], whole: bool) -> Peek:
@@ -114,7 +117,8 @@ def _text(files: Sequence[Path], whole: bool) -> Peek:
     if dress is None:
         found = head[:60].decode("cp1252", "replace")
         raise LogError(_refusal(files[0], "no table was found in the log", found, "export it as CSV with a header row"))
-    names = _unique(dress.names or [f"column {n + 1}" for n in range(_width(dress, head))])
+    written = dress.names or ("",) * _width(dress, head)
+    names = _unique(written)
     chunks = list(_chunks(files, dress))
     parts = [part for text in chunks if (part := _table(text, dress, names)).num_rows]
     if not parts:
@@ -123,7 +127,8 @@ def _text(files: Sequence[Path], whole: bool) -> Peek:
     most = PART_ROWS * 3 // len(parts)
     complete = whole and len(files) == len(chunks) and all(part.num_rows <= most for part in parts)
     complete &= all(path.stat().st_size <= 3 * PART // len(files) for path in files)
-    return Peek(parts=tuple(part.slice(0, most) for part in parts), units=units, dress=dress, whole=complete)
+    cut = tuple(part.slice(0, most) for part in parts)
+    return Peek(parts=cut, written=written, units=units, dress=dress, whole=complete)
 
 
 def _refuse_binary(path: Path, head: bytes) -> None:
@@ -140,7 +145,8 @@ def _width(dress: Dress, head: bytes) -> int:
 
 
 def _decoded(data: bytes, encoding: str) -> str:
-    return data.decode(encoding, "replace").lstrip("\ufeff")
+    text = data.decode(encoding, "replace").lstrip("\ufeff")
+    return text.replace("\r\n", "\n").replace("\r", "\n")
 
 
 def _first_bytes(path: Path, count: int) -> bytes:

@@ -49,6 +49,11 @@ class Roles:
     without_setpoint: float
     next_best: float
 
+    @property
+    def clear(self) -> bool:
+        """True when the law leaves little unexplained, and every other choice at least three times as much."""
+        return self.explained > 0.9 and 1.0 - self.explained < (1.0 - self.next_best) / 3.0
+
 
 @dataclass(frozen=True, slots=True)
 class _Choice:

@@ -6,7 +6,8 @@ import datetime
 import functools
 import itertools
 import re
-from collections.abc import Mapping, Sequence
+from collections import Counter
+from collections.abc import Iterable, Mapping, Sequence
 
 import numpy as np
 import pandas as pd
@@ -17,6 +18,8 @@ from auditor.arrays import FloatArray, IntArray
 
 NO_TIME = np.iinfo(np.int64).min
 SAMPLES = 60
+MOST = 0.8
+_FIRST, _LAST = pd.Timestamp("1900-01-01", tz="UTC"), pd.Timestamp("2200-01-01", tz="UTC")
 
 ISO = "ISO8601"
 _ISO = re.compile(r"\d{4}-\d{2}-\d{2}[T ]\d{2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?\s?(?:Z|[+-]\d{2}:?\d{2})?", re.IGNORECASE)
@@ -44,13 +47,19 @@ def samples_of(cells: pa.ChunkedArray) -> list[str]:
 
 
 def formats_for(samples: Sequence[str]) -> list[str]:
-    """Return every way of writing (``strptime``, or `ISO`) that all samples follow."""
-    if samples and all(_ISO.fullmatch(sample) for sample in samples):
+    """Return every way of writing (``strptime``, or `ISO`) that most samples follow; a few may be spoiled."""
+    if _most(_ISO.fullmatch(sample) is not None for sample in samples):
         return [ISO]
-    if samples and all(_COMPACT.fullmatch(sample) for sample in samples):
+    if _most(_COMPACT.fullmatch(sample) is not None for sample in samples):
         return ["%Y%m%d%H%M%S" if len(samples[0]) == 14 else "%Y%m%d%H%M"]
-    found = _ways_by_shape().get(_shape(samples[0]), ()) if samples else ()
-    return [way for way in found if all(_follows(sample, way) for sample in samples)]
+    shapes = Counter(map(_shape, samples)).most_common(1)
+    found = _ways_by_shape().get(shapes[0][0], ()) if shapes else ()
+    return [way for way in found if _most(_follows(sample, way) for sample in samples)]
+
+
+def _most(answers: Iterable[bool]) -> bool:
+    given = list(answers)
+    return sum(given) > MOST * len(given)
 
 
 @functools.cache
@@ -78,8 +87,8 @@ def _follows(sample: str, way: str) -> bool:
 
 
 def has_offset(samples: Sequence[str]) -> bool:
-    """Return True when every sample carries its offset from UTC."""
-    return all(_OFFSET.search(sample) for sample in samples)
+    """Return True when the samples carry their offset from UTC."""
+    return _most(_OFFSET.search(sample) is not None for sample in samples)
 
 
 def parse(cells: pa.ChunkedArray, way: str) -> IntArray:
@@ -88,6 +97,7 @@ def parse(cells: pa.ChunkedArray, way: str) -> IntArray:
     if way == ISO:
         text = text.str.replace(",", ".")
     parsed = pd.to_datetime(text, format=way, errors="coerce", utc=True)
+    parsed = parsed.where((parsed >= _FIRST) & (parsed <= _LAST))
     return np.asarray(parsed.dt.as_unit("ns").dt.tz_localize(None).to_numpy(dtype="datetime64[ns]").astype(np.int64))
 
 
@@ -111,9 +121,9 @@ def from_numbers(numbers: FloatArray, unit: str) -> IntArray:
 
 def is_date_only(samples: Sequence[str]) -> bool:
     """Return True for dates without a time of day."""
-    return bool(samples) and all(_DATE_ONLY.fullmatch(sample) for sample in samples)
+    return _most(_DATE_ONLY.fullmatch(sample) is not None for sample in samples)
 
 
 def is_time_only(samples: Sequence[str]) -> bool:
     """Return True for times of day without a date."""
-    return bool(samples) and all(_TIME_ONLY.fullmatch(sample) for sample in samples)
+    return _most(_TIME_ONLY.fullmatch(sample) is not None for sample in samples)

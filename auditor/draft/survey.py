@@ -59,10 +59,14 @@ class Survey:
     grid: FloatArray
     roles: Roles | None
 
-    @property
-    def nameless(self) -> bool:
-        """True for a text log without a header row: its columns have no names to refer to."""
-        return self.peek.dress is not None and not self.peek.dress.names
+    def written(self, name: str) -> str | None:
+        """Return the name by which the log knows a column, empty where it has none, None where two have the same."""
+        if self.long is not None and name in (column.name for column in self.long.columns):
+            return name
+        if name not in self.peek.names:
+            return name
+        own = self.peek.written[self.peek.names.index(name)]
+        return None if own and self.peek.written.count(own) > 1 else own
 
 
 def survey(path: Path) -> Survey:

@@ -35,8 +35,8 @@ WORDS: Mapping[str, Sequence[str]] = MappingProxyType(
         # What a device does speaks for the actuator; a device alone does unless a quantity stands beside it.
         "actuator": _words(
             "actuator output out op co mv cv position pos speed opening drive control manipulated stellgrosse "
-            "stellwert stellung ausgang drehzahl reglerausgang uitgang uitsturing klepstand schuifstand toerental stuursignaal "
-            "sortie commande ouverture vitesse salida velocidad apertura mando u"
+            "stellwert stellung ausgang drehzahl reglerausgang uitgang uitsturing klepstand schuifstand toerental "
+            "stuursignaal sortie commande ouverture vitesse salida velocidad apertura mando u"
         ),
         "device": _words(
             "valve gate pump damper blower ventil klappe schieber pumpe geblase klep schuif pomp regelklep vanne pompe "

@@ -10,11 +10,13 @@ import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from itertools import product
+from typing import TypeVar
 
 import numpy as np
+import numpy.typing as npt
 from scipy.optimize import minimize_scalar
 
-from auditor.arrays import IntArray
+from auditor.arrays import IntArray, read_only
 from auditor.identify import thresholds
 from auditor.identify.regression import (
     Design,
@@ -28,7 +30,9 @@ from auditor.identify.regression import (
 )
 from auditor.identify.signals import Signals, window
 from auditor.logs.findings.base import Finding
-from auditor.logs.record import Record, Span
+from auditor.logs.record import CAUSES, Record, Span
+
+_Number = TypeVar("_Number", bound=np.generic)
 
 LAGS = tuple(sorted(range(-thresholds.LONGEST_SKEW, thresholds.LONGEST_SKEW + 1), key=lambda lag: (abs(lag), lag)))
 
@@ -60,14 +64,14 @@ def shift_actuator(record: Record, skew: int) -> Record:
     """
     if skew == 0:
         return record
-    u = np.full(len(record), np.nan)
-    recorded = np.zeros(len(record), dtype=np.bool_)
-    kept = slice(max(0, -skew), len(record) - max(0, skew))
-    source = slice(max(0, skew), len(record) - max(0, -skew))
-    u[kept], recorded[kept] = record.u[source], record.valid[source]
+    u = _moved(record.u, skew, np.nan)
+    valid = record.valid & _moved(record.valid, skew, False)
+    cause = record.cause
+    if cause is not None:
+        cause = read_only(np.where(cause != 0, cause, _moved(cause, skew, CAUSES.index("gap"))))
     ends = ((span.start + max(0, -skew), span.stop - max(0, skew)) for span in record.spans)
     spans = tuple(Span(start, stop) for start, stop in ends if stop - start > 1)
-    shifted = replace(record, u=u, valid=record.valid & recorded, spans=spans)
+    shifted = replace(record, u=read_only(u), valid=read_only(valid), spans=spans, cause=cause)
     return shifted.with_findings(
         Finding(
             kind="skew",
@@ -79,6 +83,17 @@ def shift_actuator(record: Record, skew: int) -> Record:
             signal="actuator",
         )
     )
+
+
+def _moved(values: npt.NDArray[_Number], skew: int, outside: float) -> npt.NDArray[_Number]:
+    """values[k + skew] at k."""
+    moved = np.full_like(values, outside)
+    far = min(abs(skew), len(values))
+    if skew >= 0:
+        moved[: len(values) - far] = values[far:]
+    else:
+        moved[far:] = values[: len(values) - far]
+    return moved
 
 
 def skew_words(skew: int) -> str:
@@ -109,6 +124,8 @@ def best_match(signals: Signals, *, saturates: bool, quantum: float = 0.0) -> Ma
     residuals where the actuator saturates or rare large moves decide the fit: conditional integration, for one, stops
     the integral on samples where the actuator is not at its limit.
     """
+    if np.count_nonzero(signals.moving) < thresholds.ROWS_NEEDED:
+        return None
     part = window(signals, thresholds.SCAN_SAMPLES)
     match = _search(signals, part, robust=False, levels=False)
     if match is None or match.fit.exact:

@@ -12,10 +12,16 @@ import numpy as np
 
 from auditor.logs.record import Record, Span
 
+_RECORDED = 0.75
+"""Share of the samples that a log of every sample has at least; one of every second sample has half."""
+
 
 def rows_apart(record: Record) -> int:
-    """Return the samples from one row of the log to the next, 1 for a log of every sample."""
-    return max(1, round(record.log_step / record.period)) if record.log_step > 1.5 * record.period else 1
+    """Return the samples from one row of the log to the next, 1 for a log that has, or holds, every sample."""
+    inside = record.in_span
+    if record.log_step <= 1.5 * record.period or not inside.any() or np.mean(record.valid[inside]) > _RECORDED:
+        return 1
+    return round(record.log_step / record.period)
 
 
 def on_row_clock(record: Record) -> Record:
@@ -35,6 +41,7 @@ def on_row_clock(record: Record) -> Record:
         u=record.u[chosen],
         w=record.w[:, chosen],
         valid=record.valid[chosen],
+        cause=None if record.cause is None else record.cause[chosen],
         spans=tuple(span for span in spans if len(span) > 1),
     )
 

@@ -18,7 +18,7 @@ from auditor.identify.alignment import LAGS, Match, best_match, lay_out, setpoin
 from auditor.identify.coarse import on_row_clock, rows_apart
 from auditor.identify.gains import coefficients_of, controller_of, roundest, stated_controller, terms_of
 from auditor.identify.limits import saturates
-from auditor.identify.regression import Fit, measured, residual_of
+from auditor.identify.regression import measured, residual_of
 from auditor.identify.residual import anti_windup_of
 from auditor.identify.signals import Signals, read_signals
 from auditor.logs.record import Record
@@ -141,7 +141,8 @@ def _refused(record: Record, settings: ControllerSettings | None, refusal: Probl
 def _from_log(record: Record, signals: Signals, match: Match, *, coarse: bool) -> Recovery:
     controller, by_roundness = roundest(match, record, coarse=coarse)
     refusal = refusals.after_fitting(record, signals, match)
-    own_law = match.terms.kind == "P" and not setpoint_moves(signals) and match.fit.relative < thresholds.OWN_LAW
+    static = match.terms.kind == "P" and match.terms.feedforward == 0
+    own_law = static and not setpoint_moves(signals) and match.fit.relative < thresholds.OWN_LAW
     reasons = [_how_found(match, record), *_skew_words(match.lag)]
     if by_roundness:
         reasons.append(
@@ -167,35 +168,47 @@ def _from_log(record: Record, signals: Signals, match: Match, *, coarse: bool) -
 
 def _from_file(record: Record, signals: Signals, settings: ControllerSettings, match: Match | None) -> Recovery:
     stated = stated_controller(settings, record)
-    forms = (settings.integral,) if settings.integral else ("backward", *(f for f in INTEGRALS if f != "backward"))
-    levels = match.levels if match is not None else record.u_quantum is not None
-    signals = _without_feedforward(signals, match)
-    tried = {
-        (lag, form): _left_by(signals, replace(stated, integral=form), lag, record, levels=levels)
-        for lag in LAGS
-        for form in forms
-    }
-    lag, form = _first_clearly_best({key: fit.relative for key, fit in tried.items()})
+    tried = _every_lag_and_form(record, _without_feedforward(signals, match), settings, match)
+    lag, form = _first_clearly_best(tried)
     reasons: list[str] = []
     if match is not None and _log_says_otherwise(tried[lag, form], match):
         reasons.append(_disagreement(record, match))
         lag = match.lag
-        form = _first_clearly_best({(lag, f): tried[lag, f].relative for f in forms})[1]
-    chosen = replace(stated, integral=form)
-    left = _left_words(tried[lag, form].relative)
-    reasons = [f"the controller is the loop file's; {left}", *_skew_words(lag), *reasons]
-    own_law = math.isinf(chosen.integral_time) and chosen.derivative_time == 0 and not setpoint_moves(signals)
-    own_law = own_law and tried[lag, form].relative < thresholds.OWN_LAW
+        form = _first_clearly_best({key: left for key, left in tried.items() if key[0] == lag})[1]
+    chosen, left = replace(stated, integral=form), tried[lag, form]
+    reasons = [f"the controller is the loop file's; {_left_words(left)}", *_skew_words(lag), *reasons]
+    static = math.isinf(chosen.integral_time) and chosen.derivative_time == 0
+    static = static and (match is None or match.terms.feedforward == 0)
+    own_law = static and not setpoint_moves(signals) and left < thresholds.OWN_LAW
     return Recovery(
         controller=chosen,
         source="file",
         skew_samples=lag,
-        relative_residual=tried[lag, form].relative,
-        lag_table=tuple(sorted((at, fit.relative) for (at, f), fit in tried.items() if f == form)),
+        relative_residual=left,
+        lag_table=tuple(sorted((at, other) for (at, f), other in tried.items() if f == form)),
         reasons=(*reasons, refusals.OWN_LAW_WORDS) if own_law else tuple(reasons),
         own_law=own_law,
         bias=_bias(record, chosen, lag),
     )
+
+
+def _every_lag_and_form(
+    record: Record, signals: Signals, settings: ControllerSettings, match: Match | None
+) -> dict[tuple[int, str], float]:
+    """Relative residual of the file's gains at every lag in every integral form the file leaves open."""
+    stated = stated_controller(settings, record)
+    forms = (settings.integral,) if settings.integral else ("backward", *(f for f in INTEGRALS if f != "backward"))
+    levels = match.levels if match is not None else record.u_quantum is not None
+    robust = match.fit.robust if match is not None else saturates(record)
+
+    def left(lag: int, form: str) -> float:
+        controller = replace(stated, integral=form)
+        design = lay_out(signals, lag, terms_of(controller, record.period), levels=levels)
+        coefficients = coefficients_of(controller, record.period)
+        residual = residual_of(design, coefficients, np.ones(len(design.target)))
+        return measured(design, coefficients, residual, robust).relative if len(residual) else math.inf
+
+    return {(lag, form): left(lag, form) for lag in LAGS for form in forms}
 
 
 def _without_feedforward(signals: Signals, match: Match | None) -> Signals:
@@ -204,17 +217,6 @@ def _without_feedforward(signals: Signals, match: Match | None) -> Signals:
         return signals
     part = match.fit.coefficients[-match.terms.feedforward :] @ signals.w
     return replace(signals, u=signals.u - np.roll(part, match.lag))
-
-
-def _left_by(signals: Signals, controller: Pid, lag: int, record: Record, *, levels: bool) -> Fit:
-    """What given settings leave of the actuator at one lag."""
-    terms = terms_of(controller, record.period)
-    design = lay_out(signals, lag, terms, levels=levels)
-    coefficients = coefficients_of(controller, record.period)
-    if len(design.target) == 0:
-        return Fit(coefficients=coefficients, residual=np.zeros(0), scale=math.inf, relative=math.inf, robust=False)
-    residual = residual_of(design, coefficients, np.ones(len(design.target)))
-    return measured(design, coefficients, residual, robust=saturates(record))
 
 
 def _first_clearly_best(left: dict[tuple[int, str], float]) -> tuple[int, str]:
@@ -227,9 +229,9 @@ def _first_clearly_best(left: dict[tuple[int, str], float]) -> tuple[int, str]:
     return best
 
 
-def _log_says_otherwise(stated: Fit, match: Match) -> bool:
+def _log_says_otherwise(stated: float, match: Match) -> bool:
     """True when the log's own gains explain clearly more than the file's."""
-    return stated.relative > thresholds.EXACT and match.fit.relative < thresholds.CAUSE_HALVES * stated.relative
+    return stated > thresholds.EXACT and match.fit.relative < thresholds.CAUSE_HALVES * stated
 
 
 def _disagreement(record: Record, match: Match) -> str:

@@ -23,13 +23,14 @@ from auditor.identify.plant import Plant
 from auditor.identify.posterior import TEMPERATURE, chains_at, target
 from auditor.identify.prior import tuning
 from auditor.identify.spectrum import Spectrum, spectrum
+from auditor.kernels import points
 from auditor.kernels.prior import Tuning
 from auditor.logs.record import Record
 from auditor.progress import Progress, silent
 
 RUNS = 2
 DRAWS = 12  # per run
-STAGE = "identify"
+STAGE = "identifying the plant"
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -127,10 +128,15 @@ def _runs(
 
 
 def _systematic(members: sampler.Members, seed: np.random.SeedSequence) -> tuple[FloatArray, IntArray]:
-    """Evenly spaced members from a random first one."""
+    """Evenly spaced members from a random first one, in order of kind and gain.
+
+    In that order every kind is drawn as often as its share says; in the order of the chains, snapshots of the same
+    few chains would come up again and again.
+    """
     n = len(members.x)
+    order = np.lexsort((members.x[:, points.LN_GAIN], members.kind[:, 1], members.kind[:, 0]))
     offset = np.random.default_rng(seed.spawn(1)[0]).random()
-    index = np.minimum((np.arange(DRAWS) + offset) / DRAWS * n, n - 1).astype(np.int64)
+    index = order[np.minimum((np.arange(DRAWS) + offset) / DRAWS * n, n - 1).astype(np.int64)]
     return members.x[index], members.kind[index]
 
 

@@ -97,7 +97,8 @@ def _own_law(record: Record, loop: Loop) -> Problem:
 
 def _return(record: Record, controller: Pid, ensemble: Ensemble) -> _Return:
     best = ensemble.plants[ensemble.best]
-    null = null_replay(record, controller, best)
+    warm_up = round(10.0 * ensemble.tau_cl_s / record.period)
+    null = null_replay(record, controller, best, warm_up=warm_up)
     rho = controller_residual(record, controller).rho
     rounded = record.u_quantum is not None
     return _Return(

@@ -71,7 +71,7 @@ def closed_loop_matrix(plant: Plant, controller: Pid, period: float) -> FloatArr
     """
     n, d = plant.order, plant.delay
     size = n + d + 4
-    I, D, last = n + d + 1, n + d + 2, n + d + 3  # noqa: E741
+    I, D, last = n + d + 1, n + d + 2, n + d + 3
     y = np.zeros(size)
     y[:n] = plant.C
     integral, derivative, u = _control_rows(y, I, D, last, controller, period)
@@ -86,7 +86,7 @@ def closed_loop_matrix(plant: Plant, controller: Pid, period: float) -> FloatArr
 
 def _control_rows(
     y: FloatArray,
-    I: int,  # noqa: E741
+    I: int,
     D: int,
     last: int,
     controller: Pid,

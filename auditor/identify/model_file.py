@@ -54,13 +54,14 @@ def read_model(path: Path) -> Model:
 def _model(body: dict[str, Any]) -> Model:
     plants = tuple(_plant(row) for row in body.pop("plants"))
     controller = Pid(**{k: _number(k, v) for k, v in body.pop("controller").items()})
-    return Model(plants=plants, controller=controller, **{k: tuple(v) if k in _TUPLES else v for k, v in body.items()})
+    rest: dict[str, Any] = {k: tuple(v) if k in _TUPLES else v for k, v in body.items()}
+    return Model(plants=plants, controller=controller, **rest)
 
 
 def _plant(row: dict[str, Any]) -> Plant:
     load = Load(**row.pop("load"))
-    arrays = {name: read_only(np.array(row.pop(name), dtype=float)) for name in _ARRAYS}
-    rest = {k: tuple(v) if k in _TUPLES else v for k, v in row.items()}
+    arrays: dict[str, Any] = {name: read_only(np.array(row.pop(name), dtype=float)) for name in _ARRAYS}
+    rest: dict[str, Any] = {k: tuple(v) if k in _TUPLES else v for k, v in row.items()}
     return Plant(load=load, **arrays, **rest)
 
 

@@ -24,6 +24,8 @@ def pack_settings(controller: Pid, record: Record) -> FloatArray:
     pid[rows.STEP] = controller.max_rate * record.period
     pid[rows.TRACKING] = controller.tracking_time
     pid[rows.RESOLUTION] = record.u_quantum or 0.0
+    # A move of exactly one stored step must count as a move.
+    pid[rows.SETPOINT_CHANGE] = 0.999 * (record.r_quantum or 0.0)
     return pid
 
 

@@ -41,7 +41,9 @@ def too_few_rows(record: Record) -> Problem:
         found=f"fewer than {thresholds.ROWS_NEEDED} samples in automatic operation away from limits and slewing, "
         f"of {len(record)}",
         expected="a stretch of normal control, at least a few settling times long",
-        do=_STATE_IT + ", or give a log with more automatic operation",
+        do=(_likely(record) + "; " if record.log_step > 1.5 * record.period else "")
+        + _STATE_IT
+        + ", or give a log with more automatic operation",
     )
 
 

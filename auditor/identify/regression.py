@@ -246,13 +246,14 @@ def _settling(signals: Signals, terms: Terms) -> IntArray:
 
 def _shifted(values: _Flags, lag: int) -> _Flags:
     """values[k + lag] at k; what lies outside the record is False or −1."""
-    outside = np.full(abs(lag), -1 if values.dtype != np.bool_ else False, dtype=values.dtype)
+    far = min(abs(lag), len(values))
+    outside = np.full(far, -1 if values.dtype != np.bool_ else False, dtype=values.dtype)
     if lag >= 0:
-        return np.concatenate([values[lag:], outside])
-    return np.concatenate([outside, values[:lag]])
+        return np.concatenate([values[far:], outside])
+    return np.concatenate([outside, values[: len(values) - far]])
 
 
 def _spans(age: IntArray) -> list[tuple[int, int]]:
     starts = np.flatnonzero(age == 0)
-    ends = [*starts[1:], len(age)]
+    ends = [*starts[1:], len(age)][: len(starts)]
     return [(int(a), int(a + np.max(age[a:b]) + 1)) for a, b in zip(starts, ends, strict=True)]

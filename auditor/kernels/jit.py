@@ -7,7 +7,7 @@ the same on every machine. Compiled code is cached on disk, so that only the fir
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import Any, TypeVar
+from typing import Any, TypeVar, cast
 
 import numba
 from numba import types
@@ -23,12 +23,12 @@ RULE_TYPE = types.FunctionType(RULE_SIGNATURE)
 
 def compiled(function: _F) -> _F:
     """Compile a function of floats and arrays; types are found at the first call."""
-    return numba.njit(cache=True, nogil=True, error_model="numpy")(function)  # type: ignore[no-any-return]
+    return cast(_F, numba.njit(cache=True, nogil=True, error_model="numpy")(function))
 
 
 def compiled_as(signature: Any) -> Callable[[_F], _F]:
     """Compile a function for one declared signature, at import."""
-    return numba.njit(signature, cache=True, nogil=True, error_model="numpy")  # type: ignore[no-any-return]
+    return cast(Callable[[_F], _F], numba.njit(signature, cache=True, nogil=True, error_model="numpy"))
 
 
 def rule(function: _F) -> _F:

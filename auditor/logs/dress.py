@@ -6,6 +6,7 @@ Whatever the loop file states is taken as stated; only the rest is looked for.
 from __future__ import annotations
 
 import codecs
+import contextlib
 import csv
 import io
 import re
@@ -45,6 +46,8 @@ class Dress:
         Cells per row.
     multiline : bool
         Whether a quoted cell runs over several lines.
+    empty : bool
+        Whether nothing stands below the header.
     spare_cell : str
         A filled cell beyond the last name; "" when there is none, as there should be.
     """
@@ -57,6 +60,7 @@ class Dress:
     lines_before: int
     cells: int
     multiline: bool
+    empty: bool
     spare_cell: str = ""
 
 
@@ -81,6 +85,7 @@ def look(path: Path, label: str, source: LogSource, wanted: Wanted) -> Dress:
     raw, complete = _sample(path, label)
     encoding = _encoding(raw, complete, label, source.encoding)
     text = codecs.getincrementaldecoder(encoding)(errors="replace").decode(raw, complete)
+    text = text.removeprefix("\ufeff")
     if not complete:
         text = text[: max(text.rfind("\n"), text.rfind("\r")) + 1] or text
     _check_stated(source, label)
@@ -103,16 +108,7 @@ def _sample(path: Path, label: str) -> tuple[bytes, bool]:
 
 def _encoding(raw: bytes, complete: bool, label: str, stated: str | None) -> str:
     if stated is not None:
-        try:
-            return codecs.lookup(stated).name
-        except LookupError:
-            problem = Problem(
-                what=f'No encoding is called "{stated}".',
-                where="[log] encoding",
-                expected="utf-8, utf-16, cp1252, latin-1, …",
-                do=f"correct it, or leave it out and {label} is looked at",
-            )
-            raise LogError(problem) from None
+        return _stated_encoding(raw, complete, label, stated)
     wide = wide_encoding(raw)
     if wide is not None:
         return wide
@@ -121,6 +117,22 @@ def _encoding(raw: bytes, complete: bool, label: str, stated: str | None) -> str
     except UnicodeDecodeError:
         return "cp1252"
     return "utf-8-sig" if raw.startswith(codecs.BOM_UTF8) else "utf-8"
+
+
+def _stated_encoding(raw: bytes, complete: bool, label: str, stated: str) -> str:
+    try:
+        with contextlib.suppress(UnicodeError):  # one byte is too few for some encodings
+            b" ".decode(stated)
+    except LookupError:
+        what, expected = f'No encoding is called "{stated}".', "utf-8, utf-16, cp1252, latin-1, …"
+        do = f"correct it, or leave it out and {label} is looked at"
+        raise LogError(Problem(what=what, where="[log] encoding", expected=expected, do=do)) from None
+    try:
+        codecs.getincrementaldecoder(stated)().decode(raw, complete)
+    except UnicodeError as error:
+        what, do = f"The log has letters that are not {stated}.", "correct [log] encoding, or leave it out"
+        raise LogError(Problem(what=what, where=label, found=str(error), do=do)) from None
+    return codecs.lookup(stated).name
 
 
 def _check_stated(source: LogSource, label: str) -> None:
@@ -200,6 +212,7 @@ def _dress(sheet: _Sheet, encoding: str, decimal: str | None, wanted: Wanted) ->
         lines_before=starts[first] if sheet.rows else 0,
         cells=cells,
         multiline=any("\n" in cell or "\r" in cell for row in body for cell in row),
+        empty=not body,
         spare_cell=next((cell for row in body if len(row) == cells for cell in row[len(names) :] if cell), ""),
     )
 

@@ -130,7 +130,7 @@ def _missing(path: Path, entry: str) -> Problem:
             what="The log does not exist, and neither does its folder.", where=entry, do="correct [log] path"
         )
     names = sorted(p.name for p in path.parent.iterdir())
-    close = nearest(path.name, names)
+    close = next((n for n in names if n.casefold() == path.name.casefold()), None) or nearest(path.name, names)
     do = f'did you mean "{close}"?' if close else "correct [log] path; it starts from the loop file's folder"
     found = ", ".join(names[:8]) or "an empty folder"
     return Problem(what="The log does not exist.", where=entry, found=found, do=do)

@@ -12,6 +12,7 @@ from auditor.arrays import BoolArray, FloatArray, IntArray
 
 _NO_TIME = np.iinfo(np.int64).min
 _FEW = 3
+_ENOUGH = 20
 _SHARE = 0.01
 
 
@@ -106,7 +107,7 @@ def _without_strays(ordered: IntArray) -> tuple[int, int]:
     """Return the part of the ordered stamps that is the log: a few rows further away than it is long are strays."""
     low, high = int(np.searchsorted(ordered, _NO_TIME, side="right")), len(ordered)
     most = max(_FEW, int(_SHARE * (high - low)))
-    while high - low > 2 * _FEW:
+    while high - low >= _ENOUGH:
         head, tail = _far_end(ordered[low:high], most)
         if head == tail == 0:
             break
@@ -121,9 +122,9 @@ def _far_end(stamps: IntArray, most: int) -> tuple[int, int]:
         return 0, 0
     first, last = np.diff(stamps[: few + 1]), np.diff(stamps[-few - 1 :])
     head, tail = int(np.argmax(first)) + 1, few - int(np.argmax(last))
-    if first[head - 1] > stamps[-1] - stamps[head]:
+    if first[head - 1] > stamps[-1] - stamps[head] > 0:
         return head, 0
-    if last[few - tail] > stamps[-tail - 1] - stamps[0]:
+    if last[few - tail] > stamps[-tail - 1] - stamps[0] > 0:
         return 0, tail
     return 0, 0
 

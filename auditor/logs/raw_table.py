@@ -96,16 +96,17 @@ def column_problems(wanted: Wanted, names: Sequence[str], label: str) -> list[Pr
     problems = []
     for name, key in wanted.names().items():
         if not (time_columns(name, names) if key == "log.time" else name in names):
-            problems.append(_missing(name, key, names, label))
+            problems.append(_missing(name, key, names, label, wanted))
         elif names.count(name) > 1:
             what = f'{names.count(name)} columns are called "{name}".'
             problems.append(Problem(what=what, where=label, do="rename them, so that each has its own name"))
     return problems
 
 
-def _missing(name: str, key: str, names: Sequence[str], label: str) -> Problem:
+def _missing(name: str, key: str, names: Sequence[str], label: str, wanted: Wanted) -> Problem:
     shown = ", ".join(f'"{n}"' for n in names[:40]) + (f" and {len(names) - 40} more" if len(names) > 40 else "")
-    close = nearest(name, names) or next((n for n in names if n.casefold() == name.casefold()), None)
+    spare = [n for n in names if n not in wanted.names()]
+    close = next((n for n in spare if n.casefold() == name.casefold()), None) or nearest(name, spare)
     if close:
         do = f'did you mean "{close}"?'
     elif key == "log.time" and "" in names:

@@ -68,6 +68,8 @@ def read_csv(path: Path, label: str, source: LogSource, wanted: Wanted) -> RawTa
 
 
 def _shape_problems(dress: Dress, wanted: Wanted, label: str) -> list[Problem]:
+    if dress.empty:
+        return [_no_rows(dress, label)]
     if dress.spare_cell:
         what = f"The rows have {dress.cells} cells, the header has {len(dress.names)} names."
         do = "put decimal commas in quotes or use another delimiter, or name the last column"
@@ -139,10 +141,12 @@ def _check_rows(rows: int, dress: Dress, odd: _OddRows, label: str) -> None:
     if len(odd.texts) > max(_FEW_ROWS, _FEW_SHARE * rows):
         raise LogError(_too_odd(f"{len(odd.texts)} of {rows + len(odd.texts)}", dress, odd, label))
     if rows == 0:
-        found = f"a header with {len(dress.names)} columns and no row below it"
-        raise LogError(
-            Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out")
-        )
+        raise LogError(_no_rows(dress, label))
+
+
+def _no_rows(dress: Dress, label: str) -> Problem:
+    found = f"a header with {len(dress.names)} columns and no row below it"
+    return Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out")
 
 
 def _findings(path: Path, dress: Dress, odd: _OddRows, label: str) -> tuple[Finding, ...]:
@@ -164,7 +168,7 @@ def _odd_findings(path: Path, dress: Dress, odd: _OddRows, label: str) -> list[F
     findings = []
     if below:
         shown = " / ".join(_short(text) for text in below[:3])
-        findings.append(_note("footer", len(below), f"{label}, below the last row: {shown}", "skipped"))
+        findings.append(_note("footer", len(below), f"{label}, below the last complete row: {shown}", "skipped"))
     broken = len(odd.texts) - len(below)
     if broken:
         detail = (

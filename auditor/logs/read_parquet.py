@@ -34,6 +34,7 @@ def read_parquet(path: Path, label: str, wanted: Wanted) -> RawTable:
             names = list(file.schema_arrow.names)
             raise_all(LogError, column_problems(wanted, names, label))
             table = file.read(columns=_columns(wanted, names))
+            _check_letters(table)
     except (pa.ArrowException, OSError) as error:
         found = str(error).splitlines()[0]
         raise LogError(
@@ -45,6 +46,13 @@ def read_parquet(path: Path, label: str, wanted: Wanted) -> RawTable:
             Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out")
         )
     return _raw_table(_single_values(table, label), wanted, label)
+
+
+def _check_letters(table: pa.Table) -> None:
+    """Have texts looked through, because what works on them takes for granted that they are UTF-8."""
+    for column in table.columns:
+        if not pa.types.is_primitive(column.type):
+            column.validate(full=True)
 
 
 def _columns(wanted: Wanted, names: list[str]) -> list[str]:

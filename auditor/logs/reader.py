@@ -183,7 +183,7 @@ def _problem_at(parts: Sequence[_Part], rows: IntArray, what: str, expected: str
     if not len(rows):
         return []
     where, stamp = _at(parts, int(rows[0]))
-    more = f", and {len(rows) - 1} more rows" if len(rows) > 1 else ""
+    more = f" and {len(rows) - 1} more" if len(rows) > 1 else ""
     return [Problem(what=what, where=where, found=f'"{stamp}"{more}', expected=expected, do=do)]
 
 

@@ -101,7 +101,7 @@ def _without(table: RawTable, stamps: Stamps, rows: IntArray, findings: Sequence
 def _no_time(table: RawTable, rows: IntArray, stamps: Stamps, source: LogSource) -> Problem:
     first = int(rows[0])
     text = stamp_text(table, first)
-    more = f", and {len(rows) - 1} more rows like it" if len(rows) > 1 else ""
+    more = f" and {len(rows) - 1} more" if len(rows) > 1 else ""
     where = f"{table.label}, {table.locate(first)}, time column"
     found = (f'"{text}"' if text else "an empty cell") + more
     if stamps.state[first] == IMPOSSIBLE:

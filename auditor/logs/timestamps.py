@@ -30,6 +30,7 @@ _MONTHS = np.arange(f"{_FIRST_YEAR}-01", f"{_LAST_YEAR + 1}-02", dtype="datetime
 _MONTH_STARTS: IntArray = _MONTHS.astype("datetime64[D]").astype(np.int64)
 _BLOCK = 16_384  # rows at a time: their dates stay in the processor's cache
 _LOOKED_AT = 100
+_NANOSECONDS = {"s": SECOND, "ms": SECOND // 1000, "us": 1000, "ns": 1}
 _ZONED_LENGTH, _LOCAL_LENGTH, _DATE_LENGTH = 20, 16, 10
 
 
@@ -75,7 +76,7 @@ def _read(table: RawTable, source: LogSource) -> Stamps | Fields:
     column = table.times[0] if len(table.times) == 1 else _joined(table)
     kind = column.type
     if pa.types.is_timestamp(kind) or pa.types.is_date(kind):
-        return _typed(column, table)
+        return _typed(column)
     if pa.types.is_string(kind) or pa.types.is_large_string(kind):
         return _text(column, table, source)
     if not (pa.types.is_integer(kind) or pa.types.is_floating(kind) or pa.types.is_decimal(kind)):
@@ -103,18 +104,17 @@ def _as_text(column: pa.ChunkedArray) -> pa.ChunkedArray:
     return pc.utf8_trim_whitespace(pc.cast(column, pa.string()))
 
 
-def _typed(column: pa.ChunkedArray, table: RawTable) -> Stamps:
-    zone = getattr(column.type, "tz", None)
-    try:
-        whole = pc.cast(pc.cast(column, pa.timestamp("ns", zone)), pa.int64())
-    except pa.ArrowInvalid as error:
-        what = "A time stamp is beyond the years 1678…2261."
-        raise LogError(
-            Problem(what=what, where=table.label, found=str(error), do="correct or leave out the row")
-        ) from None
-    stamps = _all_read(pc.fill_null(whole, 0).to_numpy(), local=zone is None)
-    known = np.asarray(pc.is_valid(whole).to_numpy(), dtype=np.bool_)
-    return replace(stamps, state=np.where(known, READ, UNREADABLE).astype(np.uint8))
+def _typed(column: pa.ChunkedArray) -> Stamps:
+    if pa.types.is_date(column.type):
+        column = pc.cast(column, pa.timestamp("ms"))
+    size = _NANOSECONDS[column.type.unit]
+    counts = pc.cast(column, pa.int64())
+    known = np.asarray(pc.is_valid(counts).to_numpy(), dtype=np.bool_)
+    number = pc.fill_null(counts, 0).to_numpy()
+    within = np.abs(number) <= np.iinfo(np.int64).max // size
+    stamps = _all_read(np.where(within, number, 0) * size, local=column.type.tz is None)
+    state = np.where(known, np.where(within, READ, IMPOSSIBLE), UNREADABLE)
+    return replace(stamps, state=state.astype(np.uint8))
 
 
 def _text(column: pa.ChunkedArray, table: RawTable, source: LogSource) -> Stamps | Fields:
@@ -192,8 +192,15 @@ def _first_of(tables: Sequence[RawTable], rows: Sequence[BoolArray]) -> tuple[st
 
 def stamp_text(table: RawTable, row: int) -> str:
     """Return a row's time stamp as it stands in the file, "" when the cell is empty."""
-    cells = (column[row].as_py() for column in table.times)
-    return " ".join(str(cell) for cell in cells if cell is not None)
+    cells = (_cell_text(column.slice(row, 1)) for column in table.times)
+    return " ".join(cell for cell in cells if cell)
+
+
+def _cell_text(cell: pa.ChunkedArray) -> str:
+    try:
+        return pc.cast(cell, pa.string())[0].as_py() or ""
+    except pa.ArrowException:  # a time too far away to be written
+        return str(cell[0].value)
 
 
 def _no_order(tables: Sequence[RawTable], rows: Sequence[BoolArray]) -> Problem:

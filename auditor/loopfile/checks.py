@@ -190,6 +190,8 @@ def check_limits(limits: LimitsTable, signals: SignalsTable | None) -> Iterator[
             found = f"±{limits.band:g} between {limits.low:g} and {limits.high:g}"
             expected = f"at most {(limits.high - limits.low) / 2:g}"
             yield _fault(band, "is wider than the limits", found, expected, "correct band, low or high", low, high)
+        if not limits.low < limits.high:
+            return
     value = signals.setpoint.value if signals else None
     for at, bound, sign in ((low, limits.low, 1.0), (high, limits.high, -1.0)):
         if value is not None and bound is not None and sign * (value - bound) < 0:

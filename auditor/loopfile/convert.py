@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import datetime
 import zoneinfo
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from types import MappingProxyType
@@ -104,19 +104,19 @@ def to_ns(moment: datetime.datetime, zone: str | None) -> int:
     return (moment - _EPOCH) // datetime.timedelta(microseconds=1) * 1000
 
 
-def check_exclusions(log: LogTable) -> list[Fault]:
-    """Return a fault for every stretch of `log.exclude` that ends before it starts."""
-    return [
-        Fault(
-            at=("log", "exclude", n, "to"),
-            what=f"log.exclude no. {n + 1} ends before it starts",
-            found=f"from {e.from_.isoformat()} to {e.to.isoformat()}",
-            expected="from before to",
-            do="correct one of them",
-        )
-        for n, e in enumerate(log.exclude)
-        if to_ns(e.from_, log.timezone) > to_ns(e.to, log.timezone)
-    ]
+def check_exclusions(log: LogTable) -> Iterator[Fault]:
+    """Yield a fault for every stretch of `log.exclude` that ends before it starts."""
+    for n, cut in enumerate(log.exclude):
+        if to_ns(cut.from_, log.timezone) > to_ns(cut.to, log.timezone):
+            own_clock = cut.from_.tzinfo is None or cut.to.tzinfo is None
+            yield Fault(
+                at=("log", "exclude", n, "to"),
+                what=f"log.exclude no. {n + 1} ends before it starts",
+                found=f"from {cut.from_.isoformat()} to {cut.to.isoformat()}",
+                expected="from before to",
+                do="correct one of them",
+                reads=(("log", "exclude", n, "from"), *([("log", "timezone")] if own_clock else [])),
+            )
 
 
 def _signals(signals: SignalsTable) -> Signals:

@@ -16,6 +16,8 @@ from auditor.errors import Problem
 from auditor.loopfile.lines import KeyPath
 from auditor.text import nearest
 
+FILL_IN = "# FILL IN"
+
 _EXPECTED: Mapping[str, str] = MappingProxyType(
     {
         "float_type": "a number",
@@ -79,6 +81,28 @@ def as_written(value: object) -> str:
     return text if len(text) <= 70 else text[:67] + "…"
 
 
+def waiting(text: str, tables: Mapping[str, Any], lines: Mapping[KeyPath, int]) -> list[Fault]:
+    """Return a fault for every empty value on a line that is marked FILL IN."""
+    rows = text.splitlines()
+    return [
+        Fault(
+            at=path, what=f"{in_words(path)} is empty", found='""', expected="a value", do="write it between the quotes"
+        )
+        for path, line in lines.items()
+        if FILL_IN in rows[line - 1] and _value_at(tables, path) == ""
+    ]
+
+
+def _value_at(tables: Mapping[str, Any], path: KeyPath) -> Any:
+    value: Any = tables
+    for part in path:
+        try:
+            value = value[part]
+        except (KeyError, IndexError, TypeError):
+            return None  # a key that is written with escapes; it is found by its table only
+    return value
+
+
 def problems(faults: Iterable[Fault], file: str, text: str, line: Mapping[KeyPath, int | None]) -> list[Problem]:
     """Return the faults as problems, in the order of the file.
 
@@ -100,7 +124,7 @@ def problems(faults: Iterable[Fault], file: str, text: str, line: Mapping[KeyPat
 def _problem(fault: Fault, file: str, rows: Sequence[str], line: int | None) -> Problem:
     place = file if line is None else f"{file}, line {line}"
     do = fault.do
-    if line is not None and "# FILL IN" in rows[line - 1]:
+    if line is not None and FILL_IN in rows[line - 1]:
         do = f"this line waits to be filled in by you (it is marked FILL IN){'; ' + do if do else ''}"
     where = f"{place}: {in_words(fault.at)}" if fault.at else place
     return Problem(what=fault.what, where=where, found=fault.found, expected=fault.expected, do=do)

@@ -218,8 +218,8 @@ def _between_keys(found: Mapping[str, Any]) -> Iterator[Fault]:
 
 
 def _raise(faults: list[Fault], source: _Source) -> None:
-    if not faults:
-        return
     lines = key_lines(source.text)
+    faulty = {fault.at for fault in faults}
+    faults += [fault for fault in fault_room.waiting(source.text, source.raw, lines) if fault.at not in faulty]
     where = {fault.at: line_of(fault.at, lines) for fault in faults}
     raise_all(LoopFileError, fault_room.problems(faults, str(source.path), source.text, where))

@@ -61,7 +61,7 @@ class LogTable(Table):
 
     path: PathList = Field(description="a file, a list, a glob or a folder", examples=['"pool-7.csv"'])
     layout: Literal["wide", "long"] = "wide"
-    time: Text = "time"
+    time: str = "time"  # may be empty: a column without a name is the time column now and then
     time_unit: Literal["s", "ms", "us", "ns"] | None = None
     time_format: Text | None = None
     timezone: ZoneName | None = None

@@ -8,8 +8,9 @@ from dataclasses import dataclass
 import numpy as np
 
 from auditor.arrays import FloatArray, IntArray, read_only
-from auditor.controllers.pid import ANTI_WINDUPS, GAP_INTEGRALS, INTEGRALS, Pid
+from auditor.controllers.pid import GAP_INTEGRALS, Pid
 from auditor.identify.plant import Plant
+from auditor.identify.recorded import pack_form, pack_settings
 from auditor.kernels import rows as R
 from auditor.logs.record import Record
 
@@ -94,36 +95,15 @@ def make_bench(
         delay=np.array([0 if p is None else p.delay for p in chosen], dtype=np.int64),
         column=column,
         noise=_perturbations(record),
-        pid=pid_array(controller, record),
+        pid=pack_settings(controller, record),
         alpha=_forgetting(controller, record.period),
     )
 
 
-def pid_array(controller: Pid, record: Record) -> FloatArray:
-    """Write a controller the way the kernel reads it."""
-    pid = np.zeros(R.PID_SIZE)
-    pid[R.GAIN] = controller.gain
-    pid[R.INTEGRAL_STEP] = controller.integral_gain * record.period
-    pid[R.RATE_GAIN] = controller.gain * controller.derivative_time
-    pid[R.FILTER] = controller.filter_time
-    pid[R.PERIOD] = record.period
-    pid[R.WEIGHT] = controller.setpoint_weight - 1.0
-    pid[R.DEADBAND] = controller.error_deadband
-    pid[R.LOW], pid[R.HIGH] = controller.low, controller.high
-    pid[R.STEP] = controller.max_rate * record.period
-    pid[R.TRACKING] = controller.tracking_time
-    pid[R.SETPOINT_CHANGE] = record.r_quantum or 0.0
-    pid[R.RESOLUTION] = record.u_quantum or 0.0
-    return pid
-
-
 def form_array(controller: Pid, link: str, signal: str, between: str) -> IntArray:
     """Write the choices of a controller and of a setting the way the kernel reads them."""
-    form = np.zeros(R.FORM_SIZE, dtype=np.int64)
+    form = pack_form(controller)
     form[R.BRIDGE] = GAP_INTEGRALS.index(controller.gap_integral)
-    form[R.INTEGRATE] = INTEGRALS.index(controller.integral)
-    form[R.WINDUP] = ANTI_WINDUPS.index(controller.anti_windup)
-    form[R.RATE_ON_ERROR] = int(controller.derivative_on == "error")
     form[R.LINK_ACTUATOR] = int(link == "actuator")
     form[R.WATCH] = R.WATCH_MEASUREMENT if signal == "measurement" else R.WATCH_ERROR
     if link == "actuator":

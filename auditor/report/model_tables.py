@@ -19,8 +19,9 @@ def conditions_table(content: Content) -> Table:
     limits, accept = loop.limits, loop.accept
 
     def stated(value: float | None) -> Row:
-        text = with_unit(number(value), unit)
-        return (text, "stated in the loop file") if value is not None else ("–", "not stated: never guessed from the log")
+        if value is None:
+            return "–", "not stated: never guessed from the log"
+        return with_unit(number(value), unit), "stated in the loop file"
 
     rms = "assumed: 1.25 times the record's" if content.rms_assumed else "stated in the loop file"
     rows = [
@@ -76,7 +77,8 @@ def _skew(model: Model) -> str:
     count = model.skew_samples
     if count == 0:
         return "on the same sample"
-    return f"{abs(count)} sample{'s' if abs(count) > 1 else ''} {'late' if count > 0 else 'early'}; the record was shifted by it"
+    side = "late" if count > 0 else "early"
+    return f"{abs(count)} sample{'s' if abs(count) > 1 else ''} {side}; the record was shifted by it"
 
 
 def plant_table(content: Content) -> Table:

@@ -63,9 +63,9 @@ def step_responses(model: Model) -> StepResponses:
     horizon = float(np.median([_horizon(plant, model) for plant in model.plants]))
     stride = max(1, math.ceil(horizon / model.period / _POINTS))
     samples = np.arange(0, stride * _POINTS + 1, stride)
-    answers = np.array([_step(plant, samples) for plant in model.plants])
+    answers = np.array([_step(plant, samples) for plant in model.plants], dtype=np.float64)
     return StepResponses(
-        seconds=read_only(samples * model.period),
+        seconds=read_only(np.asarray(samples * model.period, dtype=np.float64)),
         likeliest=read_only(answers[model.best]),
         all=read_only(answers),
     )

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
+from auditor.logs.findings.base import Finding
 from auditor.replay import Measures
 from auditor.report.content import Content, FlagCount, Option, curve_key
 from auditor.report.phrases import CAUSES, clean, measured, rule_title, settings_text, whole
@@ -149,8 +150,8 @@ def flag_words(count: FlagCount) -> str:
 
 def replay_table(content: Content) -> Table:
     """Every replay, rule by rule."""
-    head = ("#", "setting", "updates/h", "saved", "updates [90 %]", "count without model", "RMS error {unit} [90 %]")
-    head += ("longest silence", "against clock", "trust", "flags")
+    head = ["#", "setting", "updates/h", "saved", "updates [90 %]", "count without model", "RMS error {unit} [90 %]"]
+    head += ["longest silence", "against clock", "trust", "flags"]
     groups: dict[tuple[str, ...], list[int]] = {}
     for i, replay in enumerate(content.audit.replays):
         groups.setdefault(curve_key(replay), []).append(i)
@@ -171,7 +172,8 @@ def _replay_row(content: Content, index: int) -> Row:
     first = (str(index), settings_text(replay.setting, content.audit.loop))
     naive = number(replay.naive_updates)
     if not replay.answerable:
-        return (*first, "–", "–", "–", naive, "–", "–", "–", "none", f"not answered: {clean(replay.refusal or 'no reason')}")
+        told = f"not answered: {clean(replay.refusal or 'no reason')}"
+        return (*first, "–", "–", "–", naive, "–", "–", "–", "none", told)
     m, ends = replay.measures, replay.interval90
     return (
         *first,
@@ -212,10 +214,11 @@ def finding_table(content: Content, clock: LocalClock) -> Table:
     def moment(ns: int | None) -> str:
         return "whole log" if ns is None else clock.moment(ns)
 
-    rows = [
-        (clean(f.kind), clean(f.signal) or "clock", moment(f.start), whole(f.count), clean(f.detail), clean(f.effect), f.weight)
-        for f in content.audit.record.findings
-    ]
+    def row(f: Finding) -> Row:
+        seen = (clean(f.kind), clean(f.signal) or "clock", moment(f.start), whole(f.count))
+        return (*seen, clean(f.detail), clean(f.effect), f.weight)
+
+    rows = [row(finding) for finding in content.audit.record.findings]
     head = ("finding", "signal", f"from ({clock.name})", "count", "what was seen", "what was done about it", "weight")
     return plain_table(head, rows, numeric=(3,))
 

@@ -136,9 +136,11 @@ def _problem(fault: OSError, out: Path) -> Problem:
     if fault.errno in (errno.ENOSPC, errno.EDQUOT):
         what, do = "the disk is full", "make room, or choose another folder with --out; nothing was written"
     elif fault.errno in (errno.EACCES, errno.EPERM, errno.EROFS):
-        what, do = "the folder cannot be written to", "choose another folder with --out, or ask for the right to write there"
+        what = "the folder cannot be written to"
+        do = "choose another folder with --out, or ask for the right to write there"
     elif fault.errno in (errno.ENOTDIR, errno.EEXIST):
         what, do = "there is a file where a folder is needed", "choose another folder with --out"
     else:
         what, do = "a result cannot be written", "choose another folder with --out"
-    return Problem(what=what, where=where, found=fault.strerror or str(fault), expected="a folder that can be written to", do=do)
+    found = fault.strerror or str(fault)
+    return Problem(what=what, where=where, found=found, expected="a folder that can be written to", do=do)

@@ -46,9 +46,20 @@ def clock(every: int) -> Decide:
     return lambda k, e, e_sent, m: m >= every
 
 
-def send_on_delta(delta: float, *, longest: int | None = None) -> Decide:
-    """Rule ``|e − e_sent| > delta`` [measurement unit], or `longest` samples without an update."""
-    return lambda k, e, e_sent, m: abs(e - e_sent) > delta or (longest is not None and m >= longest)
+def send_on_delta(delta: float, *, shortest: int = 1, longest: int | None = None) -> Decide:
+    """Rule ``|e − e_sent| > delta`` [measurement unit], or `longest` samples without an update.
+
+    A request that comes sooner than `shortest` samples after the last update waits until then. It keeps that
+    request: make a new one for every simulation.
+    """
+    asked = False
+
+    def decide(k: int, e: float, e_sent: float, m: int) -> bool:
+        nonlocal asked
+        asked = (asked and m > 1) or abs(e - e_sent) > delta
+        return m >= shortest and (asked or (longest is not None and m >= longest))
+
+    return decide
 
 
 def send_on_area(area: float, period: float, *, longest: int | None = None) -> Decide:

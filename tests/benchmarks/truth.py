@@ -157,7 +157,7 @@ def random_loop(seed: int, moves: int, N: int = 20_000) -> TruthLoop:
     lags, delay, kind = _random_plant(rng)
     A, B, C = _cascade(lags, kind)
     gain, integral_time = _tuned(lags, delay, kind, rng)
-    load = _random_load(N * FINE, gain, integral_time, rng)
+    load = _random_load(N * FINE, integral_time, rng)
     quiet = TruthLoop(A, B, C, round(delay * FINE), gain, integral_time, load, np.zeros(N), np.zeros(N))
     scale = 1.0 / np.std(recorded(quiet)[0][SKIPPED:])
     noise = rng.choice([0.01, 0.1]) * rng.normal(size=N)
@@ -206,13 +206,14 @@ def _tuned(lags: np.ndarray, delay: float, kind: str, rng: np.random.Generator) 
     return lag / (closed + effective), integral_time if kind == "integrator" else min(lag, integral_time)
 
 
-def _random_load(n: int, gain: float, integral_time: float, rng: np.random.Generator) -> np.ndarray:
-    """Poisson steps, a slow AR(1), a random walk held in place, or a day with an AR(1)."""
+def _random_load(n: int, integral_time: float, rng: np.random.Generator) -> np.ndarray:
+    """Steps at random times, an AR(1) slower than the loop, a random walk held in place, or a day with an AR(1)."""
     kind = rng.integers(4)
     noise = rng.normal(size=n)
     if kind == 0:
-        noise = np.where(rng.random(n) < 1.0 / (FINE * 10.0 * integral_time), 10.0 * noise, 0.0)
-    time_constant = FINE * (3000.0 if kind == 2 else integral_time * np.exp(rng.uniform(0.0, 2.0)))
+        changes = np.flatnonzero(rng.random(n) < 1.0 / (FINE * 5.0 * integral_time))
+        return np.repeat(noise[: len(changes) + 1], np.diff([0, *changes, n]))
+    time_constant = FINE * (3000.0 if kind == 2 else integral_time * np.exp(rng.uniform(0.5, 2.5)))
     load = _filtered(noise, np.exp(-1.0 / time_constant))
     if kind == 3:
         load += 2.0 * np.std(load) * np.sin(2.0 * np.pi * np.arange(n) / (FINE * 1440.0))

@@ -15,7 +15,7 @@ import numpy as np
 from auditor.controllers.pid import Pid
 from auditor.identify.plant import Load, Plant
 from auditor.logs.record import Record, Span
-from auditor.loop import Actuator, ControllerSettings, Loop, LogSource, Signal, Signals
+from auditor.loop import Actuator, ControllerSettings, LogSource, Loop, Signal, Signals
 
 PERIOD = 60.0
 LAG, GAIN, DELAY = 20.0, 0.5, 3  # samples, measurement unit / actuator unit, samples

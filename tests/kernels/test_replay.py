@@ -64,7 +64,7 @@ def oracle(bench, setting, lane):
         record.y.tolist(), record.r.tolist(), record.u.tolist(), bench.rho.tolist(), matrices(plant), bench.controller,
         setting.rule, dict(setting.values), PERIOD, link=setting.link, signal=setting.signal, between=setting.between,
         min_gap=gap, max_silence=silence, y_step=record.y_quantum or 0.0, u_step=record.u_quantum or 0.0,
-        r_step=record.r_quantum or 0.0, device=(*matrices(best), floor) if rule.predicts else None,
+        r_step=0.999 * (record.r_quantum or 0.0), device=(*matrices(best), floor) if rule.predicts else None,
     )  # fmt: skip
 
 

@@ -80,28 +80,24 @@ def simulate(seed: int = 7) -> World:
     pole = np.exp(-PERIOD / LAG)
     value = np.array([next(iter(s.values.values())) for s in rules])
     kinds = np.array(["every", *(s.rule for s in rules)])
-    threshold = np.append(0.0, value)
+    own_area, clock, always = kinds == "error-area", kinds == "periodic", kinds == "actuator-deadband"
+    area = own_area | (kinds == "send-on-area")
+    threshold = np.append(-1.0, np.where(clock[1:], value - 0.5, value))
     silence = np.append(1.0, [30.0] * len(rules))
     for k in range(LENGTH):
         y[k] = 2.0 + x + noise[k]
         e = r[k] - y[k]
         since += 1
-        total += PERIOD * np.where(kinds == "error-area", np.abs(e), np.abs(e - e_sent))
-        would = np.clip(50.0 + CONTROL * e + integral, 0, 100)
-        fire = np.abs(e - e_sent) > threshold
-        fire = np.where(kinds == "periodic", since >= threshold, fire)
-        fire = np.where((kinds == "send-on-area") | (kinds == "error-area"), total > threshold, fire)
-        fire = np.where(kinds == "actuator-deadband", np.abs(would - command) > threshold, fire)
-        fire |= (since >= silence) | (k == 0) | (kinds == "every")
-        every_sample = kinds == "actuator-deadband"
-        steps = np.where(every_sample, 1.0, np.minimum(since, 30))
-        runs = fire | every_sample
-        integral = np.where(runs, integral + CONTROL * PERIOD / INTEGRAL_TIME * steps * np.where(every_sample, e, e_sent), integral)
-        integral = np.clip(integral, -50, 50)
-        command = np.where(fire, np.clip(50.0 + CONTROL * e + integral, 0, 100), command)
+        moved = np.abs(e - e_sent)
+        total += PERIOD * np.where(own_area, np.abs(e), moved)
+        would = 50.0 + CONTROL * e + integral
+        watched = np.where(area, total, np.where(clock, since, np.where(always, np.abs(would - command), moved)))
+        fire = (watched > threshold) | (since >= silence)
+        gap_error = np.where(always, e, e_sent * since)
+        integral = np.where(fire | always, integral + CONTROL * PERIOD / INTEGRAL_TIME * gap_error, integral)
+        command = np.where(fire, 50.0 + CONTROL * e + integral, command)
         e_sent = np.where(fire, e, e_sent)
-        total = np.where(fire, 0.0, total)
-        since = np.where(fire, 0.0, since)
+        total[fire] = since[fire] = 0.0
         u[k], sent[k] = command, fire
         x = pole * x + GAIN * (1 - pole) * (u[max(0, k - DELAY)] - 50.0 - load[k])
     return World(r, y[:, 0], u[:, 0], y[:, 1:], u[:, 1:], sent[:, 1:] > 0)
@@ -153,7 +149,8 @@ def make_replays(world: World) -> tuple[Replay, ...]:
         whole = measures(*signals, counted)
         spread = 0.004 + 0.05 * whole.saved_fraction**6
         members = {
-            name: read_only(getattr(whole, name) * (1 + spread * rng.normal(size=24))) for name in ("updates", "rms_error")
+            name: read_only(getattr(whole, name) * (1 + spread * rng.normal(size=24)))
+            for name in ("updates", "rms_error")
         }
         interval = {name: tuple(float(q) for q in np.quantile(members[name], (0.05, 0.95))) for name in members}
         interval |= {
@@ -170,7 +167,9 @@ def make_replays(world: World) -> tuple[Replay, ...]:
                 rest=measures(*signals, rest),
                 by_period=(),
                 answerable=not refused,
-                refusal="delta 0.004 m is 2.0 resolution steps of the log (0.002 m); at least 3 are needed" if refused else None,
+                refusal="delta 0.004 m is 2.0 resolution steps of the log (0.002 m); at least 3 are needed"
+                if refused
+                else None,
                 trust="good" if spread < 0.01 else "limited",
                 naive_updates=whole.updates * (1 + 0.3 * whole.saved_fraction),
                 naive_rms_error=0.021,
@@ -199,7 +198,9 @@ def make_flags(replays: tuple[Replay, ...], record: Record, focus: int) -> tuple
     for n, cause in enumerate(("band", "silence", "swing", "outside-model", "fragile")):
         for k in range(n + 1):
             start = 1_500 + 3_100 * k + 700 * n
-            flags.append(_flag(focus, start, start + 20 + 60 * n, cause, 0.2 + 0.05 * n, f"{cause} for {20 + 60 * n} min"))
+            flags.append(
+                _flag(focus, start, start + 20 + 60 * n, cause, 0.2 + 0.05 * n, f"{cause} for {20 + 60 * n} min")
+            )
     return tuple(flags)
 
 
@@ -226,7 +227,15 @@ def make_record(world: World) -> Record:
             effect="cut: the record is used in two spans",
             weight="limits the answer",
         ),
-        Finding(kind="quantised", start=None, end=None, count=LENGTH, signal="level", detail="steps of 0.002 m", effect="none"),
+        Finding(
+            kind="quantised",
+            start=None,
+            end=None,
+            count=LENGTH,
+            signal="level",
+            detail="steps of 0.002 m",
+            effect="none",
+        ),
         Finding(
             kind="duplicate",
             start=hole - 10**13,
@@ -332,7 +341,9 @@ def make_audit() -> Audit:
     within = [
         i
         for i, one in enumerate(replays)
-        if one.answerable and one.setting.rule == "send-on-delta" and one.interval90["rms_error"][1] < 1.25 * baseline.rms_error
+        if one.answerable
+        and one.setting.rule == "send-on-delta"
+        and one.interval90["rms_error"][1] < 1.25 * baseline.rms_error
     ]
     focus = max(within, key=lambda i: replays[i].measures.saved_fraction)
     chosen = replays[focus]
@@ -354,14 +365,16 @@ def make_audit() -> Audit:
             decision=SWITCH,
             reasons=(
                 f"saves {chosen.measures.saved_fraction:.0%} of the updates; 30 % are wanted",
-                f"RMS error at most {chosen.interval90['rms_error'][1]:.4f} m; {1.25 * baseline.rms_error:.4f} m is accepted",
+                f"RMS error at most {chosen.interval90['rms_error'][1]:.4f} m; "
+                f"{1.25 * baseline.rms_error:.4f} m is accepted",
                 "beats the slowed-down clock at the same number of updates on both parts of the record",
                 "no danger flag stands, on the part where it was chosen and on the rest",
             ),
             cautions=(
                 "An offline replay on an identified model is not a proof of stability.",
                 "Safety functions stay on their fixed schedule and out of this.",
-                "A change of update scheme goes through the site's management of change and a licensed control engineer.",
+                "A change of update scheme goes through the site's management of change and a licensed "
+                "control engineer.",
                 "Pilot first, with the watchdog on.",
             ),
         ),
@@ -389,7 +402,9 @@ def without_model(audit: Audit) -> Audit:
 
 def without_answers(audit: Audit) -> Audit:
     """The same audit when the log carries no setting, and no limits were stated."""
-    refused = tuple(replace(r, answerable=False, refusal="the log's steps are too coarse", trust="none") for r in audit.replays)
+    refused = tuple(
+        replace(r, answerable=False, refusal="the log's steps are too coarse", trust="none") for r in audit.replays
+    )
     return replace(
         audit,
         loop=replace(audit.loop, limits=Limits()),
@@ -433,7 +448,9 @@ def hostile(audit: Audit) -> Audit:
 def many(audit: Audit) -> Audit:
     """The same audit with four hundred replays, half of them dangerous."""
     replays = tuple(
-        replace(one, setting=replace(one.setting, min_gap_s=60.0 * (1 + n)), series=None) for n in range(10) for one in audit.replays
+        replace(one, setting=replace(one.setting, min_gap_s=60.0 * (1 + n)), series=None)
+        for n in range(10)
+        for one in audit.replays
     )
     more = tuple(_flag(i, 2_000 + i, 2_400 + i, "limit", 0.9, "level below 1.88 m") for i in range(40, len(replays), 2))
     return replace(audit, replays=(*audit.replays, *replays[40:]), flags=audit.flags + more)

@@ -31,7 +31,7 @@ def compose(content: Content) -> Figure | None:
     rows = rows_of(content)
     if not rows or len(content.audit.record) < 2:
         return None
-    figure = style.new_figure(0.75 + 0.27 * len(rows))
+    figure = style.new_figure(1.0 + 0.27 * len(rows))
     draw(figure.add_subplot(), content, rows)
     return figure
 

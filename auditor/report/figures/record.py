@@ -52,7 +52,8 @@ def draw_bounds(axes: Axes, content: Content) -> Axes:
     record, limits = content.audit.record, content.audit.loop.limits
     if limits.band is not None:
         at, setpoint = _thinned(record, record.r)
-        axes.fill_between(at, setpoint - limits.band, setpoint + limits.band, color=style.ALLOWED, linewidth=0, zorder=0)
+        ends = setpoint - limits.band, setpoint + limits.band
+        axes.fill_between(at, *ends, color=style.ALLOWED, linewidth=0, zorder=0)
     for name, level in (("low limit", limits.low), ("high limit", limits.high)):
         if level is not None:
             axes.axhline(level, color=style.DANGER, linewidth=0.9, linestyle=(0, (6, 3)), zorder=1)

@@ -19,7 +19,7 @@ def compose(content: Content) -> Figure | None:
     """Draw the picture, or return None for an empty record."""
     if len(content.audit.record) < 2:
         return None
-    figure = style.new_figure(1.0)
+    figure = style.new_figure(1.15)
     draw(figure.add_subplot(), content)
     return figure
 

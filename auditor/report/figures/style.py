@@ -19,7 +19,7 @@ HAIR = "#d9d5ca"
 RECORD = "#8b949a"
 REPLAY = "#0a5c84"
 DANGER = "#a8321c"
-WATCH = "#d99a1c"
+WATCH = "#b97d0a"
 ALLOWED = "#e9eee6"
 
 PALE = "#4a97ba"
@@ -68,7 +68,8 @@ STYLE: Mapping[str, Any] = MappingProxyType(
 @contextmanager
 def drawing() -> Iterator[None]:
     """Draw in the house style; a sign that the measuring font lacks is the reader's font's business."""
-    with mpl.rc_context(dict(STYLE)), warnings.catch_warnings():
+    settings: Any = dict(STYLE)
+    with mpl.rc_context(settings), warnings.catch_warnings():
         warnings.filterwarnings("ignore", message=r"Glyph .* missing from")
         yield
 

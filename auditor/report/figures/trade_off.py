@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
 
-from auditor.arrays import FloatArray, read_only
+from auditor.arrays import FloatArray, IntArray, read_only
 from auditor.replay import Replay
 from auditor.report.content import Content, curve_key
 from auditor.report.figures import style
@@ -37,7 +38,7 @@ class Curve:
     errors: FloatArray
     rate_ends: FloatArray
     error_ends: FloatArray
-    edge: FloatArray
+    edge: IntArray
     clock: bool
     focus: bool
 
@@ -48,7 +49,10 @@ def compose(content: Content) -> Figure | None:
     if not curves or content.audit.baseline is None:
         return None
     figure = style.new_figure(4.6)
-    draw(figure.add_subplot(), content, curves)
+    axes = figure.add_subplot()
+    labels = draw(axes, content, curves)
+    style.settle(figure)
+    place_labels(axes, labels, _drawn_points(curves))
     return figure
 
 
@@ -68,7 +72,7 @@ def _curve(group: Sequence[Replay], focus: bool) -> Curve:
     hours = np.array([r.measures.hours or np.nan for r in group])
     updates = np.array([r.interval90.get("updates", (np.nan, np.nan)) for r in group])
     best = np.minimum.accumulate(errors)
-    edge = np.flatnonzero(np.r_[True, errors[1:] < best[:-1]])
+    edge: IntArray = np.flatnonzero(np.r_[True, errors[1:] < best[:-1]]).astype(np.int64)
     return Curve(
         name=rule_title(group[0].setting),
         rates=read_only(np.array([r.measures.updates_per_hour for r in group])),
@@ -81,8 +85,8 @@ def _curve(group: Sequence[Replay], focus: bool) -> Curve:
     )
 
 
-def draw(axes: Axes, content: Content, curves: Sequence[Curve]) -> Axes:
-    """Draw every curve, the record, what is accepted and what is recommended."""
+def draw(axes: Axes, content: Content, curves: Sequence[Curve]) -> list[Label]:
+    """Draw every curve, the record, what is accepted and what is recommended; return their names to be placed."""
     _frame(axes, content, curves)
     others = iter(zip(style.CURVES[1:], style.MARKERS[1:], strict=True))
     labels = []
@@ -90,18 +94,17 @@ def draw(axes: Axes, content: Content, curves: Sequence[Curve]) -> Axes:
         color, marker = _dress(curve, others)
         _draw_curve(axes, curve, color, marker)
         labels.append(_name(axes, curve, color))
-    labels += _marks(axes, content)
-    style.settle(axes.figure)
-    return place_labels(axes, [label for label in labels if label is not None], _drawn_points(curves))
+    return [label for label in (*labels, *_marks(axes, content)) if label is not None]
 
 
 def _drawn_points(curves: Sequence[Curve]) -> FloatArray:
     """Marks, whisker ends and points along the lines, shape (n, 2), for labels to keep clear of."""
     parts = [np.column_stack((c.rates, c.errors)) for c in curves]
     for curve in curves:
-        x, y = np.log(curve.rates[curve.edge]), curve.errors[curve.edge]
-        along = np.linspace(0, len(x) - 1, 12 * len(x))
-        parts.append(np.column_stack((np.exp(np.interp(along, np.arange(len(x)), x)), np.interp(along, np.arange(len(y)), y))))
+        place = np.arange(len(curve.edge))
+        along = np.linspace(0, len(place) - 1, 12 * len(place))
+        x = np.exp(np.interp(along, place, np.log(curve.rates[curve.edge])))
+        parts.append(np.column_stack((x, np.interp(along, place, curve.errors[curve.edge]))))
         if not curve.clock:
             parts += [np.column_stack((curve.rates, end)) for end in curve.error_ends.T]
     return np.concatenate(parts)
@@ -137,14 +140,12 @@ def _reach(content: Content, errors: FloatArray) -> tuple[float, float]:
     return top, max(0.0, bottom - 0.12 * (top - bottom))
 
 
-def _dress(curve: Curve, others: object) -> tuple[str, str]:
+def _dress(curve: Curve, others: Iterator[tuple[str, str]]) -> tuple[str, str]:
     if curve.clock:
         return style.INK, ""
     if curve.focus:
         return style.CURVES[0], style.MARKERS[0]
-    fallback = (style.SOFT, ".")
-    dress: tuple[str, str] = next(others, fallback)  # type: ignore[call-overload]
-    return dress
+    return next(others, (style.SOFT, "."))
 
 
 def _draw_curve(axes: Axes, curve: Curve, color: str, marker: str) -> None:
@@ -155,7 +156,11 @@ def _draw_curve(axes: Axes, curve: Curve, color: str, marker: str) -> None:
     if curve.clock:
         return
     axes.plot(x, y, linestyle="", marker=marker, markersize=4 if curve.focus else 3, color=color, zorder=4)
-    whisker = {"color": color, "linewidth": 1.0 if curve.focus else 0.7, "alpha": 1.0 if curve.focus else 0.4}
+    whisker: dict[str, Any] = {
+        "color": color,
+        "linewidth": 1.0 if curve.focus else 0.7,
+        "alpha": 1.0 if curve.focus else 0.4,
+    }
     axes.vlines(x[edge], *curve.error_ends[edge].T, zorder=2, **whisker)
     axes.hlines(y[edge], *curve.rate_ends[edge].T, zorder=2, **whisker)
 
