@@ -155,9 +155,9 @@ def test_one_day_leaves_day_and_month_open(tmp_path):
 def test_names_that_mislead(tmp_path):
     # A slave loop, as in a heat station: its output is the setpoint of the next controller and is called so.
     w = world(seed=4)
-    header = ["time", "SupplyTemperatureSP", "JacketTemperature", "JacketTemperatureSP"]
+    header = ["time", "SupplyTemperatureSP", "SupplyTemperature", "PrimaryFlowSP"]
     _, loop = drafted(tmp_path / "slave.csv", table(header, [stamps(), cells(w["r"]), cells(w["y"]), cells(w["u"])]))
-    assert roles(loop) == ("JacketTemperature", "SupplyTemperatureSP", "JacketTemperatureSP")
+    assert roles(loop) == ("SupplyTemperature", "SupplyTemperatureSP", "PrimaryFlowSP")
 
 
 def test_names_that_are_exchanged_outright(tmp_path):
@@ -349,7 +349,7 @@ def read_draft(folder: Path, made: Draft) -> Loop:
 
 def test_zone_named_in_the_preamble(tmp_path):
     w = world()
-    before = "Plant: Veldhoek pool 3; time zone Europe/Lisbon\n"
+    before = "Plant: Brackwell pool 3; time zone Europe/Lisbon\n"
     header = ["time", "level", "target", "gate", "offtake"]
     text = table(header, [stamps(form="%Y-%m-%d %H:%M"), *map(cells, w.values())], before=before)
     _, loop = drafted(tmp_path / "log.csv", text)
@@ -500,7 +500,7 @@ def test_unit_of(header, unit):
 @pytest.mark.parametrize(
     ("header", "role", "word"),
     [
-        ("DryerTemperatureSP", "setpoint", "SP"),
+        ("SupplyTemperatureSP", "setpoint", "SP"),
         ("Stellgröße", "actuator", "Stellgröße"),
         ("Consigne de niveau", "setpoint", "Consigne"),
         ("Drucksollwert", "setpoint", "Drucksollwert"),

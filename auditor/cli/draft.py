@@ -3,9 +3,12 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
+
+if TYPE_CHECKING:
+    from auditor.draft import Draft
 
 
 def register(app: typer.Typer) -> None:
@@ -13,7 +16,7 @@ def register(app: typer.Typer) -> None:
 
     @app.command("draft", help="Look at an unknown log and write a commented loop file to start from.")
     def command(
-        log: Annotated[Path, typer.Argument(metavar="LOG", help="CSV or Parquet file.")],
+        log: Annotated[str, typer.Argument(metavar="LOG", help="CSV or Parquet file, a folder of them, or a glob.")],
         out: Annotated[
             Path | None,
             typer.Option("--out", metavar="FILE", help="Loop file to write; <log name>.toml when left out."),
@@ -22,8 +25,24 @@ def register(app: typer.Typer) -> None:
         from auditor.draft import draft
         from auditor.files import write_text
 
-        target = out if out is not None else Path(log.name.split(".")[0] + ".toml")
-        drafted = draft(log, target.parent)
+        target = out if out is not None else Path(Path(log).name.split(".")[0].strip("*?[]") or "loop").with_suffix(".toml")
+        drafted = draft(log, folder=target.parent)
         write_text(target, drafted.text, replace=False)
-        print(drafted.summary)
-        print(f"\nwritten: {target}\nnext: open it, check each guess, state your limits, then `auditor check {target}`")
+        print(guesses(drafted))
+        print(f"\nwritten: {target}\n{next_steps(drafted, target)}")
+
+
+def guesses(drafted: Draft) -> str:
+    """What was guessed, how surely, and why."""
+    from auditor.cli.screen import table
+
+    rows = [[g.key, g.value, g.sure, g.reason] for g in drafted.guesses]
+    return table(["key", "guess", "how sure", "why"], rows)
+
+
+def next_steps(drafted: Draft, target: Path) -> str:
+    """What a person does next."""
+    if drafted.fill_in:
+        asked = ", ".join(drafted.fill_in)
+        return f"next: fill in {asked} (marked FILL IN), state your limits, then `auditor check {target}`"
+    return f"next: check each guess, state your limits, then `auditor check {target}` and `auditor audit {target}`"

@@ -76,7 +76,7 @@ def order_of(ns: IntArray, starts: BoolArray) -> Order:
 
 
 def gaps_of(ns: IntArray, starts: BoolArray) -> FloatArray:
-    """Return the gaps between neighbouring rows that both have a time [s], turned round when the newest row is first."""
+    """Return the gaps between neighbouring rows that have a time [s], turned round when the newest row is first."""
     known = ns != stamps.NO_TIME
     both = known[1:] & known[:-1] & ~starts[1:]
     gaps = np.asarray((ns[1:] - np.where(known[:-1], ns[:-1], 0))[both] / 1e9)

@@ -120,7 +120,10 @@ def _text(files: Sequence[Path], whole: bool) -> Peek:
     written = dress.names or ("",) * _width(dress, head)
     names = _unique(written)
     chunks = list(_chunks(files, dress))
-    parts = [part for text in chunks if (part := _table(text, dress, names)).num_rows]
+    try:
+        parts = [part for text in chunks if (part := _table(text, dress, names)).num_rows]
+    except pa.ArrowException as error:
+        raise LogError(_refusal(files[0], "the log cannot be read as a table", str(error), "export it again")) from None
     if not parts:
         raise LogError(_refusal(files[0], "the log is empty", "no row", "export it again"))
     units = dress.units or ("",) * len(names)

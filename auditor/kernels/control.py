@@ -6,12 +6,27 @@ K, h, Ti, Td, Tf as in the method; I, D, e, v are per lane. Choices shared by al
 from __future__ import annotations
 
 import math
+from typing import Any
 
 import numpy as np
 
 from auditor.arrays import FloatArray, IntArray
 from auditor.kernels import rows as R
 from auditor.kernels.jit import compiled
+
+
+@compiled
+def settings_of(pid: FloatArray) -> Any:
+    """The settings as a tuple: values that stay in registers, where an array would be read again for every lane."""
+    return (
+        pid[0], pid[1], pid[2], pid[3], pid[4], pid[5], pid[6], pid[7], pid[8], pid[9], pid[10], pid[11], pid[12],
+    )  # fmt: skip
+
+
+@compiled
+def choices_of(form: IntArray) -> Any:
+    """The choices as a tuple, for the same reason."""
+    return (form[0], form[1], form[2], form[3], form[4], form[5], form[6], form[7])
 
 
 @compiled
@@ -27,7 +42,7 @@ def clip(x: float, low: float, high: float) -> float:
 
 
 @compiled
-def begin(control: FloatArray, count: IntArray, now: FloatArray, u0: float, pid: FloatArray, form: IntArray) -> None:
+def begin(control: FloatArray, count: IntArray, now: FloatArray, u0: float, pid: Any, form: Any) -> None:
     """Start a span from the record: I = u0 − K e0, D = 0, the actuator where it was."""
     for lane in range(now.shape[1]):
         e = deadbanded(now[R.ERROR, lane], pid[R.DEADBAND])
@@ -47,9 +62,7 @@ def begin(control: FloatArray, count: IntArray, now: FloatArray, u0: float, pid:
 
 
 @compiled
-def bridged(
-    I: float, e: float, then: float, held: float, m: float, pid: FloatArray, form: IntArray, alpha: float
-) -> float:
+def bridged(I: float, e: float, then: float, held: float, m: float, pid: Any, form: Any, alpha: float) -> float:
     """I after a silence of m samples (3.1)."""
     b = then if form[R.INTEGRATE] == R.FORWARD else e
     b = 0.5 * (then + e) if form[R.INTEGRATE] == R.TRAPEZOID else b
@@ -59,9 +72,7 @@ def bridged(
 
 
 @compiled
-def unwound(
-    I: float, before: float, v: float, rho: float, command: float, m: float, pid: FloatArray, form: IntArray
-) -> float:
+def unwound(I: float, before: float, v: float, rho: float, command: float, m: float, pid: Any, form: Any) -> float:
     """I after anti-windup; a controller without integral action keeps its bias."""
     share = 1.0 if pid[R.TRACKING] == 0.0 else min(1.0, m * pid[R.PERIOD] / pid[R.TRACKING])
     drained = I + (command - v - rho) * share
@@ -81,15 +92,17 @@ def run_lane(
     m: float,
     alpha: float,
     control: FloatArray,
-    pid: FloatArray,
-    form: IntArray,
+    pid: Any,
+    form: Any,
 ) -> None:
     """Run the controller of one lane on measurement y, m samples after it ran last; leaves the command in WOULD."""
     e = deadbanded(r - y, pid[R.DEADBAND])
     before = control[R.INTEGRAL, lane]
     s = e if form[R.RATE_ON_ERROR] == 1 else -y
-    lag = pid[R.FILTER] + m * pid[R.PERIOD]
-    D = (pid[R.FILTER] * control[R.DERIVATIVE, lane] + pid[R.RATE_GAIN] * (s - control[R.SLOPE_THEN, lane])) / lag
+    D = 0.0
+    if pid[R.RATE_GAIN] != 0.0:
+        lag = pid[R.FILTER] + m * pid[R.PERIOD]
+        D = (pid[R.FILTER] * control[R.DERIVATIVE, lane] + pid[R.RATE_GAIN] * (s - control[R.SLOPE_THEN, lane])) / lag
     I = bridged(before, e, control[R.ERROR_THEN, lane], control[R.COMMAND, lane], m, pid, form, alpha)  # noqa: E741
     fixed = pid[R.GAIN] * (e + pid[R.WEIGHT] * r) + D
     v = fixed + I
@@ -109,7 +122,7 @@ def run_lane(
 
 
 @compiled
-def move(control: FloatArray, u: float, pid: FloatArray) -> None:
+def move(control: FloatArray, u: float, pid: Any) -> None:
     """Move the actuators towards their commands, at most one step each (3.4); keep the deviation from the record.
 
     An actuator with a visible resolution q deviates by whole q, so that the recorded position comes back exactly.

@@ -14,7 +14,7 @@ from numba import types
 
 from auditor.arrays import FloatArray, IntArray
 from auditor.kernels import rows as R
-from auditor.kernels.control import begin, move, run_lane
+from auditor.kernels.control import begin, choices_of, move, run_lane, settings_of
 from auditor.kernels.jit import RULE_TYPE, compiled, compiled_as
 
 
@@ -35,11 +35,12 @@ def observe(
     for i in range(1, dx.shape[0]):
         for lane in range(dx.shape[1]):
             now[R.MEASUREMENT, lane] += C[i, lane] * dx[i, lane]
-    for lane in range(dx.shape[1]):
-        away = now[R.MEASUREMENT, lane]
+    if quantum > 0.0:
         # Whole steps away from the record: the same as rounding y + C dx, on whatever lattice y was stored.
-        away = quantum * np.rint(away / quantum) if quantum > 0.0 else away
-        value = y + noise[column[lane]] + away
+        for lane in range(dx.shape[1]):
+            now[R.MEASUREMENT, lane] = quantum * np.rint(now[R.MEASUREMENT, lane] / quantum)
+    for lane in range(dx.shape[1]):
+        value = y + noise[column[lane]] + now[R.MEASUREMENT, lane]
         now[R.MEASUREMENT, lane] = value
         now[R.SETPOINT, lane] = r
         now[R.ERROR, lane] = r - value
@@ -112,7 +113,7 @@ def advance_device(
 
 
 @compiled
-def watch(now: FloatArray, control: FloatArray, form: IntArray) -> None:
+def watch(now: FloatArray, control: FloatArray, form: Any) -> None:
     """Fill the row a rule watches."""
     for lane in range(now.shape[1]):
         value = now[R.ERROR, lane]
@@ -142,8 +143,8 @@ def run_all(
     alpha: FloatArray,
     control: FloatArray,
     count: IntArray,
-    pid: FloatArray,
-    form: IntArray,
+    pid: Any,
+    form: Any,
 ) -> None:
     """Run every controller (link at the actuator: the controller sees every sample)."""
     for lane in range(now.shape[1]):
@@ -160,8 +161,8 @@ def run_asked(
     alpha: FloatArray,
     control: FloatArray,
     count: IntArray,
-    pid: FloatArray,
-    form: IntArray,
+    pid: Any,
+    form: Any,
 ) -> None:
     """Run the controllers that got a message, or may run without one, on the measurement they last received."""
     for lane in range(now.shape[1]):
@@ -232,8 +233,20 @@ def recall(past: FloatArray, places: IntArray, acting: FloatArray) -> None:
 
 
 @compiled
+def occupied(A: FloatArray) -> Any:
+    """1 where any lane has a non-zero entry, shape (n, n): chains of lags are triangular, and zeros need no work."""
+    n = A.shape[0]
+    used = np.zeros((n, n), dtype=np.uint8)
+    for i in range(n):
+        for j in range(n):
+            for lane in range(A.shape[2]):
+                used[i, j] = 1 if A[i, j, lane] != 0.0 else used[i, j]
+    return used
+
+
+@compiled
 def advance(
-    A: FloatArray, B0: FloatArray, B1: FloatArray, acting: FloatArray, dx: FloatArray, following: FloatArray
+    used: Any, A: FloatArray, B0: FloatArray, B1: FloatArray, acting: FloatArray, dx: FloatArray, following: FloatArray
 ) -> None:
     """dx⁺ = A dx + B0 δ[k−d] + B1 δ[k−d−1] (2.1); δ is zero before the span."""
     n, lanes = dx.shape
@@ -241,8 +254,9 @@ def advance(
         for lane in range(lanes):
             following[i, lane] = B0[i, lane] * acting[0, lane] + B1[i, lane] * acting[1, lane]
         for j in range(n):
-            for lane in range(lanes):
-                following[i, lane] += A[i, j, lane] * dx[j, lane]
+            if used[i, j] == 1:
+                for lane in range(lanes):
+                    following[i, lane] += A[i, j, lane] * dx[j, lane]
     for i in range(n):
         for lane in range(lanes):
             dx[i, lane] = following[i, lane]
@@ -285,6 +299,8 @@ def replay_span(
         Rows start…stop−1 are written.
     """
     n, lanes = C.shape
+    law, shape = settings_of(pid), choices_of(form)
+    used = occupied(A)
     dn = len(dC)
     ring = delay.max() + 2
     past = np.zeros((ring, lanes))
@@ -309,30 +325,30 @@ def replay_span(
         t = k - start
         observe(y[k], r[k], noise[k], column, quantum, C, dx, now)
         if first:
-            begin(control, count, now, u[k], pid, form)
+            begin(control, count, now, u[k], law, shape)
             offset[0, :] = now[R.MEASUREMENT, :]
-        elif form[R.LINK_ACTUATOR] == 1:
-            run_all(now, rho[k], alpha, control, count, pid, form)
+        elif shape[R.LINK_ACTUATOR] == 1:
+            run_all(now, rho[k], alpha, control, count, law, shape)
             count[R.SINCE_RUN, :] = 0
         if predicting:
             predict(now, device, offset, dC)
-        watch(now, control, form)
+        watch(now, control, shape)
         fires(now, sent, since, memory, settings, fired)
         decide(first, since, fired, gap, silence, count, updated)
-        if form[R.LINK_ACTUATOR] == 1:
+        if shape[R.LINK_ACTUATOR] == 1:
             send_commands(updated, control)
         elif not first:
-            run_asked(now, updated, rho[k], alpha, control, count, pid, form)
+            run_asked(now, updated, rho[k], alpha, control, count, law, shape)
         if predicting:
             correct(now, updated, device, offset, dC, floor)
         remember(now, sent, since, updated)
         if not first:
-            move(control, u[k], pid)
+            move(control, u[k], law)
         note(
             u[k], now, updated, control, count, past[t % ring], inputs[t % len(inputs)], out_y[k], out_u[k],
             out_updated[k],
         )  # fmt: skip
         recall(past, places, acting)
-        advance(A, B0, B1, acting, dx, following)
+        advance(used, A, B0, B1, acting, dx, following)
         if predicting:
             advance_device(device, device_next, offset, inputs, t, u[start], dA, dB0, dB1, d_delay)

@@ -36,19 +36,33 @@ def multiply(left: FloatArray, right: FloatArray, lower: bool, out: FloatArray) 
 
 
 @compiled
-def exponential(M: FloatArray, t: float, lower: bool) -> FloatArray:
-    """e^{M t} of a small matrix by scaling, a Taylor polynomial in Horner's form, and squaring."""
-    n = len(M)
+def halvings_needed(M: FloatArray, t: float) -> int:
+    """How often M t is halved until its largest row sum is at most 1/2."""
     norm = 0.0
-    for i in range(n):
-        norm = max(norm, t * np.abs(M[i]).sum())
+    for i in range(len(M)):
+        row = 0.0
+        for j in range(len(M)):
+            row += abs(M[i, j]) * t
+        norm = max(norm, row)
     halvings = 0
     while norm > 0.5:
         norm *= 0.5
         halvings += 1
-    X = M * (t / 2.0**halvings)
-    E = np.eye(n)
+    return halvings
+
+
+@compiled
+def exponential(M: FloatArray, t: float, lower: bool) -> FloatArray:
+    """e^{M t} of a small matrix by scaling, a Taylor polynomial in Horner's form, and squaring."""
+    n = len(M)
+    halvings = halvings_needed(M, t)
+    X = np.empty((n, n))
+    E = np.zeros((n, n))
     spare = np.empty((n, n))
+    for i in range(n):
+        E[i, i] = 1.0
+        for j in range(n):
+            X[i, j] = M[i, j] * t / 2.0**halvings
     for k in range(_TAYLOR_TERMS, 0, -1):
         multiply(X, E, lower, spare)
         for i in range(n):
@@ -84,12 +98,12 @@ def chain(x: FloatArray, m: int) -> tuple[FloatArray, FloatArray]:
     M[m + 1, m + 1] = -p
     M[m + 1, m] = 1.0
     C = np.zeros(n)
-    C[m + 1] = 1.0
+    gain = math.exp(x[points.LN_GAIN])
+    z = zero_of(x[points.ZERO]) if m > 0 else 0.0
+    C[m + 1] = gain * (1.0 - z * p)
     if m > 0:
-        z = zero_of(x[points.ZERO])
-        C[m + 1] = 1.0 - z * p
-        C[m] = z
-    return M, C * math.exp(x[points.LN_GAIN])
+        C[m] = gain * z
+    return M, C
 
 
 @compiled
@@ -111,7 +125,11 @@ def oscillator(x: FloatArray) -> tuple[FloatArray, FloatArray]:
 def denominator(x: FloatArray, m: int, E: FloatArray) -> FloatArray:
     """a(q): the sampled poles are known for a chain; for the oscillator trace and determinant of its own part."""
     if m == points.OSCILLATOR:
-        return np.array([1.0, -(E[1, 1] + E[2, 2]), E[1, 1] * E[2, 2] - E[1, 2] * E[2, 1]])
+        a = np.zeros(3)
+        a[0] = 1.0
+        a[1] = -(E[1, 1] + E[2, 2])
+        a[2] = E[1, 1] * E[2, 2] - E[1, 2] * E[2, 1]
+        return a
     a = np.zeros(m + 2)
     a[0] = 1.0
     pole = math.exp(-math.exp(x[points.LN_POLE]))
@@ -124,14 +142,17 @@ def denominator(x: FloatArray, m: int, E: FloatArray) -> FloatArray:
 
 @compiled
 def numerator(a: FloatArray, E: FloatArray, C: FloatArray, first: FloatArray, second: FloatArray) -> FloatArray:
-    """b(q) = a(q) times the response to one pulse: state `first`, one period later E first + `second`, then free.
+    """b(q) = a(q) times the response to one pulse: state f, one period later E f + `second`, then free.
 
-    The input's own place in the states (index 0) is not used: it is zero after the pulse.
+    f is the first column of `first`. The input's own place in the states (index 0) is not used: it is zero after the
+    pulse.
     """
     n = len(C)
-    state = first.copy()
-    following = np.empty(n)
+    state = np.zeros(n)
+    following = np.zeros(n)
     b = np.zeros(n)
+    for i in range(1, n):
+        state[i] = first[i, 0]
     for lag in range(n):
         response = 0.0
         for i in range(1, n):
@@ -142,7 +163,8 @@ def numerator(a: FloatArray, E: FloatArray, C: FloatArray, first: FloatArray, se
             following[i] = second[i] if lag == 0 else 0.0
             for j in range(1, n):
                 following[i] += E[i, j] * state[j]
-        state[:] = following
+        for i in range(1, n):
+            state[i] = following[i]
     return b
 
 
@@ -164,6 +186,6 @@ def difference_equation(x: FloatArray, m: int) -> tuple[int, FloatArray, FloatAr
         for j in range(1, n):
             carried[i] += late[i, j] * early[j, 0]
     a = denominator(x, m, whole)
-    b = numerator(a, whole, C, late[:, 0].copy(), carried)
-    load = numerator(a, whole, C, whole[:, 0].copy(), np.zeros(n))
+    b = numerator(a, whole, C, late, carried)
+    load = numerator(a, whole, C, whole, np.zeros(n))
     return d, a, b, load

@@ -82,8 +82,9 @@ def replay_lanes(bench: Bench, setting: Setting) -> Lanes:
     lanes = len(bench.delay)
     gap, silence = guards(setting, record.period)
     form = form_array(bench.controller, setting.link, setting.signal, setting.between)
-    out_y = np.full((len(record), lanes), np.nan)
-    out_u = np.full((len(record), lanes), np.nan)
+    out_y, out_u = np.empty((len(record), lanes)), np.empty((len(record), lanes))
+    outside = ~record.in_span
+    out_y[outside] = out_u[outside] = np.nan
     out_updated = np.zeros((len(record), lanes), dtype=np.uint8)
     device = _device(bench, rule)
     for span in record.spans:

@@ -24,7 +24,7 @@ class Option:
     Attributes
     ----------
     role : str
-        "recommended", "candidate", "runner-up", "slowed-down clock" or "present clock".
+        "recommended", "best candidate", "runner-up", "slowed-down clock" or "present clock".
     index : int or None
         Index into the audit's replays, None for the record itself.
     measures, first, rest : Measures
@@ -57,7 +57,7 @@ class Content:
     focus : int or None
         The replay the pages are about: the recommended one, else the best candidate, None without any answer.
     recommended : bool
-        True when `focus` is the recommended replay.
+        True when the verdict is to switch to `focus`; otherwise it is a candidate.
     options : tuple of Option
         The decision table.
     shown : tuple of int
@@ -65,7 +65,7 @@ class Content:
     hidden : int
         Further replays with danger flags that are not shown.
     flags : tuple of Flag
-        The flags the table shows, most severe first; `flags_left_out` more belong to the shown replays.
+        The flags the table shows, those of `focus` first, then most severe first; `flags_left_out` more belong to the shown replays.
     counts : tuple of FlagCount
         One per replay.
     max_rms_error : float or None
@@ -99,7 +99,7 @@ def gather(audit: Audit) -> Content:
     return Content(
         audit=audit,
         focus=focus,
-        recommended=audit.recommendation.replay is not None,
+        recommended=is_recommended(audit),
         options=_options(audit, focus, counts),
         shown=shown,
         hidden=hidden,
@@ -118,8 +118,13 @@ def accepted_rms_error(audit: Audit) -> float | None:
     return None if audit.baseline is None else RMS_MARGIN * audit.baseline.rms_error
 
 
+def is_recommended(audit: Audit) -> bool:
+    """True when the verdict is to switch; a setting that was chosen but does not hold is a candidate only."""
+    return audit.recommendation.replay is not None and audit.verdict.decision == "switch"
+
+
 def focus_of(audit: Audit) -> int | None:
-    """Index of the recommended replay, else of the best candidate, None when nothing was answered."""
+    """Index of the replay the audit chose, else of the best candidate, None when nothing was answered."""
     if audit.recommendation.replay is not None:
         return audit.recommendation.replay
     candidates = _answered(audit, lambda replay: replay.setting.rule != "periodic")
@@ -150,7 +155,7 @@ def _count(flags: Sequence[Flag], period: float) -> FlagCount:
 
 
 def _weight(flag: Flag, focus: int | None) -> tuple[bool, bool, float, int]:
-    return flag.severity != "danger", flag.replay != focus, -flag.values.get("share", 0.0), flag.start
+    return flag.replay != focus, flag.severity != "danger", -flag.values.get("share", 0.0), flag.start
 
 
 def _answered(audit: Audit, wanted: Callable[[Replay], bool]) -> list[int]:
@@ -188,7 +193,7 @@ def _shown(audit: Audit, focus: int | None, counts: Sequence[FlagCount]) -> tupl
 def _options(audit: Audit, focus: int | None, counts: Sequence[FlagCount]) -> tuple[Option, ...]:
     listed: list[Option] = []
     if focus is not None:
-        role = "recommended" if audit.recommendation.replay is not None else "candidate"
+        role = "recommended" if is_recommended(audit) else "best candidate"
         listed.append(_option(role, focus, audit))
         listed += [_option("runner-up", i, audit) for i in _runner_up(audit, focus, counts)]
     if audit.baseline is not None:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
+from auditor.dangers.interval import Flag
 from auditor.logs.findings.base import Finding
 from auditor.replay import Measures
 from auditor.report.content import Content, FlagCount, Option, curve_key
@@ -190,22 +191,34 @@ def _replay_row(content: Content, index: int) -> Row:
 
 
 def flag_table(content: Content, clock: LocalClock) -> Table:
-    """The shown flags, most severe first."""
-    record = content.audit.record
-    rows = [
-        (
-            f"#{flag.replay}",
-            clock.moment(int(record.time_ns(flag.start))),
-            seconds((flag.stop - flag.start) * record.period),
-            f"{clean(flag.cause)}: {CAUSES[flag.cause]}" if flag.cause in CAUSES else clean(flag.cause),
-            flag.severity,
-            percent(flag.values.get("share")),
-            clean(flag.detail),
-        )
-        for flag in content.flags
+    """The shown flags: those of the setting the pages are about, then those of others, most severe first."""
+    own = [flag for flag in content.flags if flag.replay == content.focus]
+    others = [flag for flag in content.flags if flag.replay != content.focus]
+    name = "the recommended setting" if content.recommended else "the best candidate"
+    groups = [
+        (title, tuple(_flag_row(content, clock, f) for f in flags)) for title, flags in ((name, own), (_OTHERS, others))
     ]
-    head = ("setting", f"start ({clock.name})", "for", "cause", "severity", "share of plants", "evidence")
-    return plain_table(head, rows, numeric=(2, 5))
+    return Table(
+        head=("setting", f"start ({clock.name})", "for", "cause", "severity", "share of plants", "evidence"),
+        numeric=frozenset({2, 5}),
+        groups=tuple(group for group in groups if group[1]),
+    )
+
+
+_OTHERS = "other settings with danger flags"
+
+
+def _flag_row(content: Content, clock: LocalClock, flag: Flag) -> Row:
+    record, cause = content.audit.record, clean(flag.cause)
+    return (
+        f"#{flag.replay}",
+        clock.moment(int(record.time_ns(flag.start))),
+        seconds((flag.stop - flag.start) * record.period),
+        f"{cause}: {CAUSES[flag.cause]}" if flag.cause in CAUSES else cause,
+        flag.severity,
+        percent(flag.values.get("share")),
+        clean(flag.detail),
+    )
 
 
 def finding_table(content: Content, clock: LocalClock) -> Table:

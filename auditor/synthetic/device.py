@@ -40,7 +40,8 @@ def execute(pid: Pid, memory: Memory, r: float, y: float, m: int, h: float) -> M
         integral = memory.integral
     v = free + integral
     command = min(max(v, pid.low), pid.high)
-    if pid.anti_windup == "back-calculation" and _winds_up(pid):
+    # Without integral action I is a constant bias.
+    if pid.anti_windup == "back-calculation" and not math.isinf(pid.integral_time):
         integral += (command - v) * (1.0 if pid.tracking_time == 0 else min(1.0, m * h / pid.tracking_time))
     return Memory(integral, derivative, r - y, _slope_of(pid, r, y), command, 0)
 
@@ -83,11 +84,6 @@ def _proportional(pid: Pid, r: float, y: float) -> float:
 def _slope_of(pid: Pid, r: float, y: float) -> float:
     """The signal the derivative is taken of."""
     return _felt(pid, r - y) if pid.derivative_on == "error" else -y
-
-
-def _winds_up(pid: Pid) -> bool:
-    """False for a constant bias, and for the saturating integral, which already follows the limited command."""
-    return not math.isinf(pid.integral_time) and pid.gap_integral != "saturating"
 
 
 def _outward(pid: Pid, v: float, step: float) -> bool:

@@ -36,8 +36,8 @@ def density(spectrum, kinds):
 
 
 def test_the_same_seed_gives_the_same_members(spectrum, kinds, monkeypatch) -> None:
-    monkeypatch.setattr(sampler, "COOLING", 40)  # a short run draws all the same random numbers
-    monkeypatch.setattr(starts, "STARTS", 600)
+    for module, name, size in ((sampler, "COOLING", 40), (starts, "STARTS", 600), (starts, "CHAINS", 24)):
+        monkeypatch.setattr(module, name, size)  # a short run takes the same steps
     one, same, other = (sampler.run(spectrum, kinds, WEIGHTS, seed) for seed in (3, 3, 4))
     np.testing.assert_array_equal(one.x, same.x)
     np.testing.assert_array_equal(one.kind, same.kind)
@@ -46,6 +46,7 @@ def test_the_same_seed_gives_the_same_members(spectrum, kinds, monkeypatch) -> N
 
 def test_progress_grows_to_one(spectrum, kinds, monkeypatch) -> None:
     monkeypatch.setattr(starts, "STARTS", 600)
+    monkeypatch.setattr(starts, "CHAINS", 24)
     seen: list[float] = []
     sampler.run(spectrum, kinds, WEIGHTS, 1, seen.append)
     assert seen == sorted(seen)

@@ -44,6 +44,13 @@ def test_without_a_recommendation_the_best_candidate_is_within_the_accepted_erro
     assert best.measures.saved_fraction == max(r.measures.saved_fraction for r in rivals)
 
 
+def test_a_choice_that_is_not_decided_is_a_candidate(audit: Audit) -> None:
+    undecided = gather(replace(audit, verdict=replace(audit.verdict, decision="undecided")))
+    assert undecided.focus == audit.recommendation.replay
+    assert not undecided.recommended
+    assert undecided.options[0].role == "best candidate"
+
+
 def test_with_too_strict_an_error_the_candidate_still_saves_what_is_wanted(audit: Audit) -> None:
     strict = replace(audit.loop, accept=replace(audit.loop.accept, max_rms_error=1e-6, min_saved_fraction=0.9))
     best = gather(replace(fake_audit.kept(audit), loop=strict)).replay
@@ -106,6 +113,13 @@ def test_flags_are_shown_most_severe_first_and_the_rest_counted(audit: Audit) ->
     assert content.flags[0].severity == "danger"
     shares = [flag.values["share"] for flag in content.flags[1:]]
     assert shares == sorted(shares, reverse=True)
+
+
+def test_own_flags_come_before_those_of_others(audit: Audit) -> None:
+    focus = audit.recommendation.replay
+    assert focus is not None
+    flags = (_flag(39, 1, 9, "danger", 1.0), _flag(focus, 5, 6, share=0.1))
+    assert [flag.replay for flag in gather(replace(audit, flags=flags)).flags] == [focus, 39]
 
 
 def test_the_accepted_error_is_the_stated_one_or_a_quarter_more_than_the_record(audit: Audit) -> None:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
@@ -40,6 +42,7 @@ def draw_measurement(axes: Axes, content: Content, series: Series | None) -> Axe
     if series is not None:
         draw_envelope(axes, record, series.y, color=style.REPLAY, zorder=3, alpha=0.55)
     axes.plot(*_thinned(record, record.r), color=style.INK, linewidth=0.8, zorder=4)
+    mind_the_signals(axes, content, (record.r, record.y) if series is None else (record.r, record.y, series.y))
     axes.set_ylabel(style.with_unit("measurement", clean(content.audit.loop.signals.measurement.unit)))
     words = [("recorded", style.RECORD), ("setpoint", style.INK)]
     if series is not None:
@@ -66,7 +69,23 @@ def draw_bounds(axes: Axes, content: Content) -> Axes:
                 ha="right",
                 fontsize=7.5,
                 color=style.DANGER,
-            )
+                annotation_clip=True,
+            ).set_in_layout(False)
+    return axes
+
+
+def mind_the_signals(axes: Axes, content: Content, drawn: Sequence[FloatArray]) -> Axes:
+    """Scale to the signals; a limit far away would flatten them."""
+    values = np.concatenate(drawn)
+    values = values[np.isfinite(values)]
+    if not len(values):
+        return axes
+    low, high = float(values.min()), float(values.max())
+    reach = (high - low) or content.audit.loop.limits.band or 1.0
+    near = [x for x in (content.audit.loop.limits.low, content.audit.loop.limits.high) if x is not None]
+    near = [x for x in near if low - reach < x < high + reach]
+    low, high = min([low, *near]), max([high, *near])
+    axes.set_ylim(low - 0.08 * (high - low or reach), high + 0.08 * (high - low or reach))
     return axes
 
 

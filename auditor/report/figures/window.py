@@ -2,23 +2,22 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from auditor.arrays import FloatArray
 from auditor.dangers.interval import Flag
 from auditor.replay import Series
 from auditor.report.content import Content
 from auditor.report.figures import style
-from auditor.report.figures.record import draw_bounds, heading
+from auditor.report.figures.record import draw_bounds, heading, mind_the_signals
 from auditor.report.figures.time_axis import clock_axis, days
 from auditor.report.phrases import clean
 
 _FEWEST, _MOST = 120, 900
+_TELLING_SHARE = 0.25
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -32,13 +31,13 @@ class Window:
 
 
 def telling_window(content: Content) -> Window | None:
-    """Choose the window: the most severe flag of the replay, else its largest error."""
+    """Choose the window: the most severe flag of the replay, or its largest error when no flag weighs much."""
     replay = content.replay
     if replay is None or replay.series is None or not content.audit.record.in_span.any():
         return None
     own = [flag for flag in content.audit.flags if flag.replay == content.focus]
-    if own:
-        worst = min(own, key=lambda f: (f.severity != "danger", -f.values.get("share", 0.0), f.start))
+    worst = min(own, key=lambda f: (f.severity != "danger", -f.values.get("share", 0.0), f.start), default=None)
+    if worst is not None and (worst.severity == "danger" or worst.values.get("share", 0.0) >= _TELLING_SHARE):
         why = f"the most severe flag of this setting ({worst.cause}, {worst.severity})"
         return _around(content, worst.start, worst.stop, why, worst)
     error = np.abs(content.audit.record.r - replay.series.y)
@@ -84,7 +83,7 @@ def draw_measurement(axes: Axes, content: Content, series: Series, window: Windo
     axes.plot(at, setpoint, color=style.INK, linewidth=0.8, drawstyle="steps-post", zorder=2)
     axes.plot(at, recorded, color=style.RECORD, linewidth=1.1, zorder=3)
     axes.plot(at, replayed, color=style.REPLAY, linewidth=1.3, zorder=4)
-    _mind_the_signals(axes, content, (setpoint, recorded, replayed))
+    mind_the_signals(axes, content, (setpoint, recorded, replayed))
     axes.set_ylabel(style.with_unit("measurement", clean(content.audit.loop.signals.measurement.unit)))
     return heading(axes, [("recorded", style.RECORD), ("replayed", style.REPLAY), ("setpoint", style.INK)])
 
@@ -112,17 +111,3 @@ def draw_actuator(axes: Axes, content: Content, series: Series, window: Window) 
 
 def _tint(flag: Flag) -> str:
     return style.DANGER if flag.severity == "danger" else style.WATCH
-
-
-def _mind_the_signals(axes: Axes, content: Content, drawn: Sequence[FloatArray]) -> None:
-    """Scale to the signals; a limit far away would flatten them."""
-    values = np.concatenate(drawn)
-    values = values[np.isfinite(values)]
-    if not len(values):
-        return
-    low, high = float(values.min()), float(values.max())
-    reach = (high - low) or content.audit.loop.limits.band or 1.0
-    near = [x for x in (content.audit.loop.limits.low, content.audit.loop.limits.high) if x is not None]
-    near = [x for x in near if low - reach < x < high + reach]
-    low, high = min([low, *near]), max([high, *near])
-    axes.set_ylim(low - 0.08 * (high - low or reach), high + 0.08 * (high - low or reach))
