@@ -209,9 +209,8 @@ def stepped(count: int, first: float, steps: dict[int, float]) -> np.ndarray:
     return values
 
 
-def write_canal_pool(scenario: Scenario, folder: Path) -> None:
+def write_canal_pool(scenario: Scenario, done: Simulation, folder: Path) -> None:
     """CSV with two outages of the radio link (the gate went on by itself) and four rows that were sent twice."""
-    done = scenario.run()
     stamps = scenario.stamps.strftime("%Y-%m-%dT%H:%M:%SZ")
     modes = np.where(scenario.automatic, "AUTO", "MAN")
     rows = [
@@ -224,9 +223,8 @@ def write_canal_pool(scenario: Scenario, folder: Path) -> None:
     write_lines(folder / "canal-pool.csv", ["time,level,target,gate,mode", *kept])
 
 
-def write_aeration(scenario: Scenario, folder: Path) -> None:
+def write_aeration(scenario: Scenario, done: Simulation, folder: Path) -> None:
     """CSV as a European control room exports it: local time, semicolons, decimal commas; probe frozen while wiped."""
-    done = scenario.run()
     oxygen = done.y.copy()
     oxygen[CLEANING] = oxygen[CLEANING.start - 1]
     modes = np.where(scenario.automatic, "AUTO", "CLEANING")
@@ -239,9 +237,8 @@ def write_aeration(scenario: Scenario, folder: Path) -> None:
     write_lines(folder / "aeration.csv", ["time;oxygen;setpoint;blower;mode", *rows])
 
 
-def write_heat_station(scenario: Scenario, folder: Path) -> None:
+def write_heat_station(scenario: Scenario, done: Simulation, folder: Path) -> None:
     """Parquet, UTC stamps in milliseconds."""
-    done = scenario.run()
     columns = {
         "supply": np.round(done.y, 2),
         "supply_setpoint": np.round(done.r, 1),
@@ -251,9 +248,8 @@ def write_heat_station(scenario: Scenario, folder: Path) -> None:
     write_parquet(folder / "heat-station.parquet", scenario.stamps, pa.timestamp("ms", tz="UTC"), columns)
 
 
-def write_booster_pump(scenario: Scenario, folder: Path) -> None:
+def write_booster_pump(scenario: Scenario, done: Simulation, folder: Path) -> None:
     """Parquet, stamps in microseconds with their zone, mode as a number."""
-    done = scenario.run()
     columns = {
         "pressure": np.round(done.y, 2),
         "pressure_setpoint": np.round(done.r, 2),
@@ -264,7 +260,7 @@ def write_booster_pump(scenario: Scenario, folder: Path) -> None:
     write_parquet(folder / "booster-pump.parquet", scenario.stamps, pa.timestamp("us", tz="Europe/Oslo"), columns)
 
 
-SAMPLES: dict[str, tuple[Callable[..., Scenario], Callable[[Scenario, Path], None]]] = {
+SAMPLES: dict[str, tuple[Callable[[int], Scenario], Callable[[Scenario, Simulation, Path], None]]] = {
     "canal-pool": (canal_pool, write_canal_pool),
     "aeration": (aeration, write_aeration),
     "heat-station": (heat_station, write_heat_station),
@@ -292,7 +288,8 @@ def main() -> None:
     wanted = parser.parse_args()
     wanted.out.mkdir(parents=True, exist_ok=True)
     for make, write in SAMPLES.values():
-        write(make(wanted.seed), wanted.out)
+        scenario = make(wanted.seed)
+        write(scenario, scenario.run(), wanted.out)
 
 
 if __name__ == "__main__":

@@ -141,8 +141,7 @@ def _refused(record: Record, settings: ControllerSettings | None, refusal: Probl
 def _from_log(record: Record, signals: Signals, match: Match, *, coarse: bool) -> Recovery:
     controller, by_roundness = roundest(match, record, coarse=coarse)
     refusal = refusals.after_fitting(record, signals, match)
-    static = match.terms.kind == "P" and match.terms.feedforward == 0
-    own_law = static and not setpoint_moves(signals) and match.fit.relative < thresholds.OWN_LAW
+    own_law = _static_either_way(signals, match)
     reasons = [_how_found(match, record), *_skew_words(match.lag)]
     if by_roundness:
         reasons.append(
@@ -164,6 +163,19 @@ def _from_log(record: Record, signals: Signals, match: Match, *, coarse: bool) -
         own_law=own_law,
         bias=_bias(record, controller, match.lag),
     )
+
+
+def _static_either_way(signals: Signals, match: Match) -> bool:
+    """Tell whether nothing but one static relation between actuator and measurement was found.
+
+    White noise on it may be the sensor's own: then the measurement follows the actuator, and the "controller" is the
+    plant's inverse. Rare large moves of the actuator off the relation are another matter: they show which is which.
+    """
+    if match.terms.kind != "P" or match.terms.feedforward > 0 or setpoint_moves(signals):
+        return False
+    size = np.abs(match.fit.residual)
+    moved = float(np.median(size)) < thresholds.HEAVY_TAIL * float(np.sqrt(np.mean(size**2)))
+    return match.fit.relative < (thresholds.OWN_LAW if moved else thresholds.EITHER_WAY)
 
 
 def _from_file(record: Record, signals: Signals, settings: ControllerSettings, match: Match | None) -> Recovery:

@@ -34,13 +34,19 @@ def suggest(record: Record, loop: Loop, tau_cl_s: float | None = None) -> str:
     step = STEP_IN_ERRORS * record.error_deviation
     bump = BUMP_IN_ACTUATORS * float(np.std(record.u[inside]))
     hold = duration(max(4.0 * SETTLINGS * tau, 20.0 * record.period))
-    y_unit, u_unit = loop.signals.measurement.unit, loop.signals.actuator.unit
     if bump == 0.0:
         return (
             f"What would settle it: a log in which the actuator moves; one setpoint step, held for {hold}, is enough."
         )
+    if step == 0.0:
+        return "What would settle it: a log in which the measurement moves while the loop is in automatic operation."
+    step_size = _with_unit(step, loop.signals.measurement.unit)
+    bump_size = _with_unit(bump, loop.signals.actuator.unit)
     return (
-        f"What would settle it: one setpoint step of about {number(step, 2)} {y_unit} held for {hold}, twice, or one "
-        f"manual interval of {hold} that starts with an actuator bump of {number(bump, 2)} {u_unit}; then the same "
-        "audit on the longer log."
+        f"What would settle it: one setpoint step of about {step_size} held for {hold}, twice, or one manual interval "
+        f"of {hold} that starts with an actuator bump of {bump_size}; then the same audit on the longer log."
     )
+
+
+def _with_unit(value: float, unit: str) -> str:
+    return f"{number(value, 2)} {unit}".rstrip()

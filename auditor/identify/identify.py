@@ -16,13 +16,14 @@ from auditor.identify.ensemble import Ensemble, estimate
 from auditor.identify.experiment import suggest
 from auditor.identify.plant import Model
 from auditor.identify.residual import choose_anti_windup, controller_residual, explained_by_error, null_replay
-from auditor.identify.thresholds import NULL_GOOD
+from auditor.identify.thresholds import NULL_GOOD, OWN_LAW
 from auditor.identify.trust import Evidence, judge
 from auditor.identify.validate import explained_percent, held_out_percent, setpoint_moves
 from auditor.logs.record import Record
 from auditor.logs.spans import bridge
 from auditor.loop import Loop
 from auditor.progress import Progress, silent
+from auditor.text import percent
 
 MOVES_NEEDED = 2
 """Setpoint moves from which a log counts as excited."""
@@ -63,7 +64,7 @@ def identify(
     if not recovery.usable:
         raise CannotAnswerError(recovery.refusal or Problem(what="the controller cannot be recovered from the log"))
     if recovery.own_law:
-        raise CannotAnswerError(_own_law(record, loop))
+        raise CannotAnswerError(_own_law(record, loop, recovery))
     aligned = shift_actuator(record, recovery.skew_samples)
     ensemble = estimate(
         aligned, recovery.controller, plant=loop.plant, seed=seed, quick=quick, workers=workers, progress=progress
@@ -85,11 +86,18 @@ def replace_gap(controller: Pid, loop: Loop) -> Pid:
     return replace(controller, gap_integral=stated)
 
 
-def _own_law(record: Record, loop: Loop) -> Problem:
+def _own_law(record: Record, loop: Loop, recovery: Recovery) -> Problem:
+    exact = recovery.relative_residual < OWN_LAW
+    found = "any plant explains such a record; a fit with no dead time would return the controller's inverse"
+    rest = percent(recovery.relative_residual, 1)
+    noisy = (
+        f"all but {rest} of the actuator is one static function of the measurement, and the rest is white noise: it may "
+        "be the controller's law, or a measurement that follows its actuator at once"
+    )
     return Problem(
         what="the log holds only the controller's own law: the actuator is a fixed function of the measurement",
         where=f"actuator '{loop.signals.actuator.column}' against measurement '{loop.signals.measurement.column}'",
-        found="any plant explains such a record; a fit with no dead time would return the controller's inverse",
+        found=found if exact else noisy,
         expected="a log in which the setpoint moves, or the actuator moves without the controller",
         do=suggest(record, loop),
     )

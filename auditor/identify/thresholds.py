@@ -43,6 +43,11 @@ DERIVATIVE_BETTER = 0.7
 OWN_LAW = 1e-3
 """Relative residual below which the actuator is a static function of the measurement, rounding of the log included."""
 
+EITHER_WAY = 0.1
+"""The same for a law found in the log, when white noise is all that lies between it and the record: noise of a
+measurement that follows its actuator at once leaves as much. A flow against its own valve leaves 0.01–0.09
+(Tennessee Eastman logs, stream 1), and nothing else in such a log says which of the two answers the other."""
+
 HEAVY_TAIL = 0.2
 """Median over rms of the residual below which rare large moves decide a least-squares fit (0.67 for normal noise)."""
 

@@ -129,10 +129,15 @@ def move(control: FloatArray, u: float, pid: Any) -> None:
     """
     step = pid[R.STEP]
     q = pid[R.RESOLUTION]
+    if math.isinf(step):
+        for lane in range(control.shape[1]):
+            control[R.POSITION, lane] = control[R.COMMAND, lane]
+    else:
+        for lane in range(control.shape[1]):
+            position = control[R.POSITION, lane]
+            control[R.POSITION, lane] = position + clip(control[R.COMMAND, lane] - position, -step, step)
     for lane in range(control.shape[1]):
-        position = control[R.POSITION, lane]
-        command = control[R.COMMAND, lane]
-        moved = command if math.isinf(step) else position + clip(command - position, -step, step)
-        control[R.POSITION, lane] = moved
-        away = moved - u
-        control[R.DEVIATION, lane] = q * np.rint(away / q) if q > 0.0 else away
+        control[R.DEVIATION, lane] = control[R.POSITION, lane] - u
+    if q > 0.0:
+        for lane in range(control.shape[1]):
+            control[R.DEVIATION, lane] = q * np.rint(control[R.DEVIATION, lane] / q)

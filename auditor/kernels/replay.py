@@ -19,11 +19,21 @@ from auditor.kernels.jit import RULE_TYPE, compiled, compiled_as
 
 
 @compiled
+def leading_zeros(column: IntArray) -> int:
+    """Number of lanes before the first that is perturbed."""
+    for lane in range(len(column)):
+        if column[lane] != 0:
+            return lane
+    return len(column)
+
+
+@compiled
 def observe(
     y: float,
     r: float,
     noise: FloatArray,
     column: IntArray,
+    quiet: int,
     quantum: float,
     C: FloatArray,
     dx: FloatArray,
@@ -39,11 +49,13 @@ def observe(
         # Whole steps away from the record: the same as rounding y + C dx, on whatever lattice y was stored.
         for lane in range(dx.shape[1]):
             now[R.MEASUREMENT, lane] = quantum * np.rint(now[R.MEASUREMENT, lane] / quantum)
+    for lane in range(quiet):
+        now[R.MEASUREMENT, lane] = y + now[R.MEASUREMENT, lane]
+    for lane in range(quiet, dx.shape[1]):
+        now[R.MEASUREMENT, lane] = y + noise[column[lane]] + now[R.MEASUREMENT, lane]
     for lane in range(dx.shape[1]):
-        value = y + noise[column[lane]] + now[R.MEASUREMENT, lane]
-        now[R.MEASUREMENT, lane] = value
         now[R.SETPOINT, lane] = r
-        now[R.ERROR, lane] = r - value
+        now[R.ERROR, lane] = r - now[R.MEASUREMENT, lane]
 
 
 @compiled
@@ -301,6 +313,7 @@ def replay_span(
     n, lanes = C.shape
     law, shape = settings_of(pid), choices_of(form)
     used = occupied(A)
+    quiet = leading_zeros(column)
     dn = len(dC)
     ring = delay.max() + 2
     past = np.zeros((ring, lanes))
@@ -323,7 +336,7 @@ def replay_span(
     for k in range(start, stop):
         first = k == start
         t = k - start
-        observe(y[k], r[k], noise[k], column, quantum, C, dx, now)
+        observe(y[k], r[k], noise[k], column, quiet, quantum, C, dx, now)
         if first:
             begin(control, count, now, u[k], law, shape)
             offset[0, :] = now[R.MEASUREMENT, :]

@@ -65,7 +65,8 @@ class Content:
     hidden : int
         Further replays with danger flags that are not shown.
     flags : tuple of Flag
-        The flags the table shows, those of `focus` first, then most severe first; `flags_left_out` more belong to the shown replays.
+        The flags the table shows, those of `focus` first, then most severe first; `flags_left_out` more belong to
+        the shown replays.
     counts : tuple of FlagCount
         One per replay.
     max_rms_error : float or None

@@ -15,7 +15,7 @@ from auditor.arrays import FloatArray
 
 def fine_times(count: int, period: float, parts: int) -> FloatArray:
     """Times since the start, shape (count, parts), in the unit of `period`."""
-    return (np.arange(count * parts) * (period / parts)).reshape(count, parts)
+    return np.asarray(np.arange(count * parts) * (period / parts), dtype=np.float64).reshape(count, parts)
 
 
 def between(times: FloatArray, begin: float, length: float) -> FloatArray:

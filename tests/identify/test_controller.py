@@ -173,6 +173,31 @@ def test_a_static_law_without_setpoint_moves_is_said_to_be_all_there_is(settings
     assert any("only the controller's own law" in reason for reason in found.reasons)
 
 
+def test_a_noisy_static_law_may_be_the_controllers_or_the_plants() -> None:
+    rng = np.random.default_rng(7)
+    record = simulate(Pid(gain=5.0))
+    noise = 0.05 * float(np.std(record.u)) * rng.standard_normal(len(record))
+    assert from_log(replace(record, u=record.u + noise)).own_law
+    # The mirror image: a flow that follows its valve at once and is measured with 5 % noise. What looks like a
+    # controller of gain −1/0.01 is the plant's inverse.
+    valve = record.u
+    flow = 0.01 * valve + 0.05 * 0.01 * float(np.std(valve)) * rng.standard_normal(len(record))
+    found = from_log(replace(record, y=flow, u=valve, r=np.full(len(record), float(np.mean(flow)))))
+    assert found.controller.gain == pytest.approx(-100.0, rel=0.01)  # 5 % noise biases by 0.25 %
+    assert found.own_law
+
+
+def test_rare_moves_off_a_static_law_show_that_it_is_the_controllers() -> None:
+    record = simulate(Pid(gain=5.0), n=6000)
+    u = record.u.copy()
+    for start in range(500, 6000, 1000):
+        u[start : start + 40] += 3.0 * float(np.std(u))
+    found = from_log(replace(record, u=u))
+    assert found.controller.gain == pytest.approx(5.0, rel=1e-6)
+    assert found.usable
+    assert not found.own_law
+
+
 def test_rounding_is_not_taken_for_integral_action() -> None:
     found = from_log(rounded(simulate(Pid(gain=5.0)), 0.05))
     assert math.isinf(found.controller.integral_time)

@@ -315,6 +315,17 @@ def test_no_dead_band_where_small_changes_are_there():
     assert archive_deadband(np.empty(0), None) is None
 
 
+def test_the_last_digit_of_a_log_that_moves_far_is_no_dead_band():
+    # Batches warmed from 20 to 85 degrees, stored to 0.001: the step is under 1e-4 of the deviation and not looked
+    # for. A quarter of the values repeat, as a resting signal does, and no change is smaller than the last digit.
+    rng = np.random.default_rng(6)
+    warming = np.repeat(np.linspace(20.0, 85.0, 20), 200)
+    resting = np.cumsum(rng.choice([-0.001, 0.0, 0.001], size=4000))
+    values = np.round(warming + resting, 3)
+    assert 1e-4 * float(np.std(values)) > 0.001
+    assert archive_deadband(values, None) is None
+
+
 def test_an_archive_that_leaves_rows_out_is_told_to_be_stated():
     channels = pool_channels(4000)
     kept = send_on_delta(channels["level"], 0.05)

@@ -42,16 +42,16 @@ def test_integral_of_the_error_after_a_load_step(integral, lag, K, Ti, expected)
 
 
 def test_integral_of_the_absolute_error_tells_an_overshoot():
-    """Lag 1, delay 1, K = 0.5, Ti = 1: IAE = 2.0357 against IE = 2; K = 0.25 does not overshoot, IAE = IE = 4
-    (derived; printed to four decimals)."""
+    """Lag 1, delay 1, K = 0.5, Ti = 1: IAE = 2.0350 against IE = 2; K = 0.25 does not overshoot, IAE = IE = 4
+    (derived: the delay equation integrated by Heun's method on a step of 1e-4)."""
     plant = chain((1.0,), delay_s=1.0)
-    for K, expected in ((0.5, 2.0357), (0.25, 4.0)):
+    for K, expected in ((0.5, 2.0350), (0.25, 4.0)):
         coarse, fine = (
             h * np.abs(load_step(plant, Pid(gain=K, integral_time=1.0, integral="trapezoid"), h, 80.0)).sum()
             for h in (0.02, 0.01)
         )
         # A held actuator is h/2 late, so the error falls with h: extrapolated to a continuous controller.
-        assert 2 * fine - coarse == pytest.approx(expected, abs=2e-4)
+        assert 2 * fine - coarse == pytest.approx(expected, abs=3e-4)
 
 
 @pytest.mark.parametrize(("K", "T"), [(5.0, 2.0), (0.5, 3.0)])
@@ -59,18 +59,18 @@ def test_load_step_with_the_integral_time_on_the_lag(K, T):
     """y = (e^{−t/T} − e^{−Kt/T})/(K − 1), IAE = T/K, ISE = T/(2K(1 + K)), peak at T ln K/(K − 1) (derived)."""
 
     def figures(h):
-        e = load_step(chain((T,)), Pid(gain=K, integral_time=T, integral="trapezoid"), h, 60 * T)
+        e = load_step(chain((T,)), Pid(gain=K, integral_time=T, integral="trapezoid"), h, 40 * T)
         return np.array([h * np.abs(e).sum(), h * (e**2).sum(), h * np.argmax(-e)]), -e
 
-    h = 0.004
+    h = 0.01
     coarse, _ = figures(2 * h)
     fine, y = figures(h)
     iae, ise, _ = 2 * fine - coarse
-    # What the extrapolation leaves is of the order of h².
-    assert iae == pytest.approx(T / K, rel=2e-5)
-    assert ise == pytest.approx(T / (2 * K * (1 + K)), rel=2e-5)
+    # What the extrapolation leaves is of the order of (K h / T)².
+    assert iae == pytest.approx(T / K, rel=1e-4)
+    assert ise == pytest.approx(T / (2 * K * (1 + K)), rel=1e-4)
     # A flat top: the largest sample lies within a few periods of the peak.
-    assert fine[2] == pytest.approx(T * math.log(K) / (K - 1), abs=0.02)
+    assert fine[2] == pytest.approx(T * math.log(K) / (K - 1), abs=3 * h)
     t = h * np.arange(len(y))
     curve = (np.exp(-t / T) - np.exp(-K * t / T)) / (K - 1)
     # Lateness of h/2 in a signal whose slope is at most 1/T.
@@ -140,7 +140,7 @@ def test_limits_and_resolutions_hold():
     n = 400
     pid = Pid(gain=30.0, integral_time=20.0, low=20.0, high=60.0, max_rate=2.0)
     plant = chain((20.0,), gain=0.05, delay_s=2.3).resting(2.0, 40.0)
-    noise, load = rng.normal(0, 0.05, n), rng.normal(0, 30, (n, 4))
+    noise, load = rng.normal(0, 0.05, n), 60 * np.sin(np.arange(n) / 30)
     done = simulate(plant, pid, np.full(n, 2.0), load, noise, period=1.0, y_step=0.01, u_step=0.5)
     assert done.u.min() == 20.0
     assert done.u.max() == 60.0

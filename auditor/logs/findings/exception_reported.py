@@ -17,6 +17,7 @@ _HOLE = 0.05
 _ABOVE_STEP = 1.5
 _REGULAR_STORES = 0.05
 _FEWEST_LEVELS = 10
+_LAST_DIGIT = 1e-4
 
 
 def archive_deadband(values: FloatArray, step: float | None) -> float | None:
@@ -31,7 +32,8 @@ def archive_deadband(values: FloatArray, step: float | None) -> float | None:
     values : ndarray, shape (n,), [unit]
         Values in the order they were stored, held in between.
     step : float or None
-        Step of the lattice the values lie on [unit]; changes of one step are no dead-band.
+        Step of the lattice the values lie on [unit]; changes of one step are no dead-band. A lattice finer than 1e-4
+        of the values' deviation is not looked for, so that a dead-band that fine is the log's last digit.
     """
     finite = values[np.isfinite(values)]
     repeats = finite[1:] == finite[:-1]
@@ -47,7 +49,7 @@ def archive_deadband(values: FloatArray, step: float | None) -> float | None:
     smaller, next_up = int(np.sum(sizes < 0.5 * low)), int(np.sum((sizes >= low) & (sizes < 2 * low)))
     if next_up < _FEWEST or smaller > _HOLE * next_up:
         return None
-    if step is not None and low < _ABOVE_STEP * step:
+    if low < (_LAST_DIGIT * float(np.std(finite)) if step is None else _ABOVE_STEP * step):
         return None
     least = float(sizes.min())
     return least if least > 0.9 * low else low
