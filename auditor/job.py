@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from pathlib import Path
 
 from auditor.dangers import find_flags
 from auditor.dangers.base import Case as DangerCase
@@ -12,7 +13,7 @@ from auditor.errors import CannotAnswerError, Problem
 from auditor.identify.identify import aligned_record, injected_residual
 from auditor.identify.plant import Model
 from auditor.logs.record import Record
-from auditor.loop import Loop
+from auditor.loop import Actuator, LogSource, Loop, Signal, Signals
 from auditor.panel import make_setting
 from auditor.progress import Progress, silent
 from auditor.replay.bench import Bench, make_bench
@@ -97,7 +98,7 @@ def _compared(outcome: Outcome[tuple[Flag, ...]], curve: ClockCurve) -> Replay:
     )
 
 
-def replay(record: Record, model: Model, rule: str, *, loop: Loop, **settings: float) -> Replay:
+def replay(record: Record, model: Model, rule: str, *, loop: Loop | None = None, **settings: float) -> Replay:
     """Replay one rule at one setting, with the signals of the median member.
 
     Parameters
@@ -107,8 +108,8 @@ def replay(record: Record, model: Model, rule: str, *, loop: Loop, **settings: f
     model : Model
     rule : str
         A name of `auditor rules`.
-    loop : Loop
-        Limits and guards the replay is held against.
+    loop : Loop, optional
+        Limits and guards the replay is held against; none when left out.
     **settings : float
         The rule's own settings; `min_gap_s`, `max_silence_s` are guards [s].
 
@@ -117,8 +118,15 @@ def replay(record: Record, model: Model, rule: str, *, loop: Loop, **settings: f
     RuleError
         The rule or a setting is unknown or out of range.
     """
-    setting = make_setting(rule, settings, loop, record.period)
-    return replay_setting(record, model, loop, setting)[0]
+    held_against = loop if loop is not None else _without_limits(record.period)
+    setting = make_setting(rule, settings, held_against, record.period)
+    return replay_setting(record, model, held_against, setting)[0]
+
+
+def _without_limits(period: float) -> Loop:
+    """A loop of which nothing but the period is stated."""
+    nothing = Signals(measurement=Signal(), setpoint=Signal(), actuator=Actuator())
+    return Loop(name="loop", period=period, log=LogSource(paths=(), folder=Path()), signals=nothing)
 
 
 def replay_setting(

@@ -29,8 +29,6 @@ LOWEST, HIGHEST = 0.15, 4.0
 
 GUARDS = ("min_gap_s", "max_silence_s")
 
-LINKS = ("sensor", "actuator")
-
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Scale:
@@ -99,9 +97,14 @@ def make_setting(
     rule = get_rule(name)
     values = rule.complete({k: v for k, v in given.items() if k not in GUARDS})
     shown = {k: v for k, v in values.items() if k in given or (math.isfinite(v) and v != rule_default(name, k))}
+    link = request.link if request and request.link else rule.link
+    if link not in rule.links:
+        raise RuleError(
+            Problem(what=f"rule '{name}' has no link '{link}'", found=link, expected=" or ".join(rule.links))
+        )
     setting = Setting(
         rule=name,
-        link=(request.link if request and request.link else rule.link),
+        link=link,
         signal=(request.signal if request and request.signal else "error"),
         between=(request.between if request and request.between else "hold"),
         values=MappingProxyType(shown),
@@ -170,6 +173,4 @@ def one_setting(rule: str, given: Mapping[str, float], loop: Loop, link: str | N
     RuleError
         The rule, a setting or the link is unknown or out of range.
     """
-    if link is not None and link not in LINKS:
-        raise RuleError(Problem(what="there is no such link", found=link, expected=" or ".join(LINKS)))
     return make_setting(rule, given, loop, loop.period, RuleRequest(rule=rule, link=link))

@@ -87,5 +87,7 @@ def test_the_panel_scales_with_the_units_of_the_log() -> None:
 
 
 def test_an_unknown_link_is_refused() -> None:
-    with pytest.raises(RuleError, match="no such link"):
+    with pytest.raises(RuleError, match="no link 'radio'"):
         one_setting("send-on-delta", {"delta": 1.0}, loop(), "radio")
+    with pytest.raises(RuleError, match="no link 'sensor'"):
+        one_setting("actuator-deadband", {"delta": 1.0}, loop(), "sensor")

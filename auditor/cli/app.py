@@ -7,7 +7,6 @@ import sys
 import traceback
 from collections.abc import Sequence
 
-import click
 import typer
 
 from auditor.cli import audit, check, demo, draft, identify, replay, rules
@@ -39,19 +38,20 @@ def run(arguments: Sequence[str]) -> int:
     except AuditorError as error:
         print(error, file=sys.stderr)
         return error.exit_code
-    except click.exceptions.Abort:
-        return _interrupted()
-    except click.ClickException as error:
-        error.show()
-        return WRONG_COMMAND
-    except KeyboardInterrupt:
+    except (typer.Abort, KeyboardInterrupt):
         return _interrupted()
     except BrokenPipeError:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return 0
     except Exception as error:
-        return _fault(error)
+        return _wrong_command(error) if hasattr(error, "show") else _fault(error)
     return int(result or 0)
+
+
+def _wrong_command(error: Exception) -> int:
+    """Errors of the command line know how to show themselves, whichever version of the parser raised them."""
+    error.show()  # type: ignore[attr-defined]
+    return WRONG_COMMAND
 
 
 def _interrupted() -> int:

@@ -26,6 +26,6 @@ def register(app: typer.Typer) -> None:
             record = read_record(loop)
             progress("reading the log", 1.0)
         if json:
-            sys.stdout.write(log_json(record, loop))
+            sys.stdout.write(log_json(record))
             return
         print(record_lines(record, loop), findings_table(record), asked_of_log(record, loop), sep="\n\n")

@@ -25,7 +25,9 @@ def register(app: typer.Typer) -> None:
         from auditor.draft import draft
         from auditor.files import write_text
 
-        target = out if out is not None else Path(Path(log).name.split(".")[0].strip("*?[]") or "loop").with_suffix(".toml")
+        target = (
+            out if out is not None else Path(Path(log).name.split(".")[0].strip("*?[]") or "loop").with_suffix(".toml")
+        )
         drafted = draft(log, folder=target.parent)
         write_text(target, drafted.text, replace=False)
         print(guesses(drafted))

@@ -30,11 +30,12 @@ def register(app: typer.Typer) -> None:
     ) -> int:
         from auditor.cli.screen import progress_on_stderr
         from auditor.cli.summary import model_lines
-        from auditor.files import write_text
+        from auditor.files import write_bytes, write_text
         from auditor.identify.identify import identify
         from auditor.identify.model_file import model_text
         from auditor.logs.align import read_record
         from auditor.loopfile import read_loop
+        from auditor.report.figures.step_response import picture
 
         loop = read_loop(loopfile)
         with progress_on_stderr(quiet=json) as progress:
@@ -44,12 +45,6 @@ def register(app: typer.Typer) -> None:
         if save is not None:
             write_text(save, model_text(model))
         if plot is not None:
-            _plot(model, loop, plot)
+            write_bytes(plot, picture(model, loop.signals.measurement.unit, plot.suffix))
         sys.stdout.write(model_text(model) if json else model_lines(model, loop) + "\n")
         return 4 if model.trust == "none" else 0
-
-
-def _plot(model, loop, path: Path) -> None:  # type: ignore[no-untyped-def]
-    from auditor.report.figures import save_model_figure
-
-    save_model_figure(model, loop, path)

@@ -4,12 +4,16 @@ from __future__ import annotations
 
 import sys
 from pathlib import Path
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
+from auditor.cli.audit import CANNOT_ANSWER
 from auditor.cli.options import JOBS, Json, LoopFile, ModelFile, Quick, Seed
 from auditor.errors import CommandError, Problem
+
+if TYPE_CHECKING:
+    from auditor.replay import Replay
 
 
 def register(app: typer.Typer) -> None:
@@ -33,7 +37,7 @@ def register(app: typer.Typer) -> None:
         seed: Seed = 1,
         quick: Quick = False,
         json: Json = False,
-    ) -> None:
+    ) -> int:
         from auditor.cli.screen import progress_on_stderr
         from auditor.cli.summary import replay_lines
         from auditor.files import write_bytes
@@ -46,8 +50,9 @@ def register(app: typer.Typer) -> None:
         from auditor.report.as_json import replay_json
         from auditor.report.series import series_bytes
 
+        values = parse(given or [])
         loop = read_loop(loopfile)
-        setting = one_setting(rule, parse(given or []), loop, link)
+        setting = one_setting(rule, values, loop, link)
         with progress_on_stderr(quiet=json) as progress:
             progress("reading the log", 0.0)
             record = read_record(loop)
@@ -61,12 +66,18 @@ def register(app: typer.Typer) -> None:
             write_bytes(series, series_bytes(record, result.series, series.suffix))
         if json:
             sys.stdout.write(replay_json(result, flags, record))
-            return
+            return answered(result)
         print(replay_lines(result, loop))
         dangers = [f for f in flags if f.severity == "danger"]
         print(f"{'flags':<18}{len(flags)}, {len(dangers)} of them danger")
         for flag in dangers[:5]:
             print(f"  {flag.cause}: {flag.detail}")
+        return answered(result)
+
+
+def answered(result: Replay) -> int:
+    """Exit code: 4 when the log cannot answer this setting."""
+    return 0 if result.answerable else CANNOT_ANSWER
 
 
 def parse(pairs: list[str]) -> dict[str, float]:

@@ -91,8 +91,8 @@ def _own_law(record: Record, loop: Loop, recovery: Recovery) -> Problem:
     found = "any plant explains such a record; a fit with no dead time would return the controller's inverse"
     rest = percent(recovery.relative_residual, 1)
     noisy = (
-        f"all but {rest} of the actuator is one static function of the measurement, and the rest is white noise: it may "
-        "be the controller's law, or a measurement that follows its actuator at once"
+        f"all but {rest} of the actuator is one static function of the measurement, and the rest is noise: it may be "
+        "the controller's law, or a measurement that follows its actuator at once"
     )
     return Problem(
         what="the log holds only the controller's own law: the actuator is a fixed function of the measurement",

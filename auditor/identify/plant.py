@@ -87,7 +87,7 @@ class Plant:
     @property
     def order(self) -> int:
         """Number of states."""
-        return int(len(self.C))
+        return len(self.C)
 
     @property
     def integrating(self) -> bool:

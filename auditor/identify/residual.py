@@ -145,10 +145,13 @@ def explained_by_error(rho: FloatArray, record: Record) -> float:
     Differences are compared (of rho with those of e, e itself and those of w): rho and the sum of e both wander, and
     two wandering series explain each other by chance. The error's three moves before let a derivative take part.
     Samples at a limit or slewing, and those right after, are left out: rho is held there. Wrong gains alone give 1.
+    What is left is also held against the actuator's own movement: far too large gains make a rho that is hardly
+    anything but the error, of an actuator that has nothing to do with it.
     """
     moved = moves(record.e)
     before = [np.concatenate([np.full(lag, np.nan), moved[: len(moved) - lag]]) for lag in range(1, _MEMORY + 1)]
-    return _share(rho, record, [moved, record.e, *before, *(moves(w) for w in record.w)])
+    columns = [moved, record.e, *before, *(moves(w) for w in record.w)]
+    return min(_share(rho, record, columns, moves(record.u)), _share(rho, record, columns))
 
 
 def explained_by_disturbances(rho: FloatArray, record: Record) -> float:
@@ -169,14 +172,15 @@ def within(record: Record) -> BoolArray:
     return inside
 
 
-def _share(rho: FloatArray, record: Record, columns: Sequence[FloatArray]) -> float:
+def _share(rho: FloatArray, record: Record, columns: Sequence[FloatArray], whole: FloatArray | None = None) -> float:
+    """One less the power of rho's movement that the columns leave, over that of `whole` (rho's movement itself)."""
     held = at_limit(record) | slewing(record)
     usable = within(record) & ~held & ~np.concatenate([[True], held[:-1]])
     target = moves(rho)
     for column in (target, *columns):
         usable &= np.isfinite(column)
     target = target[usable]
-    power = float(target @ target)
+    power = float(np.sum((target if whole is None else whole[usable]) ** 2))
     if power == 0.0 or not columns:
         return 0.0
     table = np.stack([column[usable] for column in columns], axis=1)

@@ -103,16 +103,16 @@ def run_lane(
     if pid[R.RATE_GAIN] != 0.0:
         lag = pid[R.FILTER] + m * pid[R.PERIOD]
         D = (pid[R.FILTER] * control[R.DERIVATIVE, lane] + pid[R.RATE_GAIN] * (s - control[R.SLOPE_THEN, lane])) / lag
-    I = bridged(before, e, control[R.ERROR_THEN, lane], control[R.COMMAND, lane], m, pid, form, alpha)  # noqa: E741
+    I = bridged(before, e, control[R.ERROR_THEN, lane], control[R.COMMAND, lane], m, pid, form, alpha)
     fixed = pid[R.GAIN] * (e + pid[R.WEIGHT] * r) + D
     v = fixed + I
     if form[R.WINDUP] == R.WINDUP_FREEZE:
         # Freezing decides on the command it would have given, then gives the command without that step.
-        I = unwound(I, before, v, rho, 0.0, m, pid, form)  # noqa: E741
+        I = unwound(I, before, v, rho, 0.0, m, pid, form)
         v = fixed + I
     command = clip(v + rho, pid[R.LOW], pid[R.HIGH])
     if form[R.WINDUP] == R.WINDUP_BACK:
-        I = unwound(I, before, v, rho, command, m, pid, form)  # noqa: E741
+        I = unwound(I, before, v, rho, command, m, pid, form)
     control[R.INTEGRAL, lane] = I
     control[R.DERIVATIVE, lane] = D
     control[R.ERROR_THEN, lane] = e

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import fields
 from typing import Any
 
@@ -12,7 +12,7 @@ import numpy as np
 
 from auditor.audit import Audit
 from auditor.controllers.pid import Pid
-from auditor.dangers.interval import Flag
+from auditor.dangers.interval import Flag, covered_samples
 from auditor.identify.plant import Model, Plant
 from auditor.logs.findings.base import Finding
 from auditor.logs.record import Record, Span
@@ -30,7 +30,7 @@ Json = dict[str, Any]
 
 def audit_json(audit: Audit) -> str:
     """Write an audit as the text of `audit.json`."""
-    return json.dumps(audit_object(audit), allow_nan=False, ensure_ascii=False, indent=1) + "\n"
+    return _text(audit_object(audit))
 
 
 def audit_object(audit: Audit) -> Json:
@@ -41,7 +41,7 @@ def audit_object(audit: Audit) -> Json:
             "format": FORMAT,
             "version": VERSION,
             "loop": _loop(audit),
-            "log": _log(audit),
+            "log": log_object(audit.record, audit.counted),
             "controller": _controller(audit),
             "model": _model(audit),
             "baseline": measures_object(audit.baseline),
@@ -53,6 +53,25 @@ def audit_object(audit: Audit) -> Json:
         }
     )
     return known
+
+
+def log_json(record: Record) -> str:
+    """Write what was found in a log; nothing is counted before a loop is identified."""
+    return _text(log_object(record, ()))
+
+
+def replay_json(replay: Replay, flags: Sequence[Flag], record: Record) -> str:
+    """Write one replay with its flags."""
+    count = FlagCount(
+        watch=sum(f.severity == "watch" for f in flags),
+        danger=sum(f.severity == "danger" for f in flags),
+        flagged_s=covered_samples(flags) * record.period,
+    )
+    return _text({"replay": replay_object(replay, count), "flags": [flag_object(f, record) for f in flags]})
+
+
+def _text(body: Json) -> str:
+    return json.dumps(finite(body), allow_nan=False, ensure_ascii=False, indent=1) + "\n"
 
 
 def finite(value: Any) -> Any:
@@ -150,8 +169,9 @@ def usable_fraction(record: Record) -> float:
     return float(np.mean(record.valid)) if len(record) else 0.0
 
 
-def _log(audit: Audit) -> Json:
-    record, length = audit.record, len(audit.record)
+def log_object(record: Record, counted: Sequence[Span]) -> Json:
+    """Return what was found in a log: rows, spans, lost hours, findings."""
+    length = len(record)
     return {
         "rows": record.rows,
         "start": _time(record, 0) if length else None,
@@ -160,7 +180,7 @@ def _log(audit: Audit) -> Json:
         "samples": length,
         "usable_fraction": usable_fraction(record),
         "spans": [_span(record, s) | {"samples": len(s)} for s in record.spans],
-        "counted": [_span(record, s) for s in audit.counted],
+        "counted": [_span(record, s) for s in counted],
         "lost_hours": record.lost_hours,
         "findings": [_finding(f) for f in record.findings],
     }

@@ -9,6 +9,7 @@ import pandas as pd
 import pyarrow as pa
 import pyarrow.parquet as pq
 
+from auditor.errors import OutputError, Problem
 from auditor.logs.record import Record
 from auditor.replay import Series
 
@@ -42,3 +43,23 @@ def series_parquet(record: Record, series: Series) -> bytes:
     table = pa.Table.from_pandas(series_frame(record, series), preserve_index=False)
     pq.write_table(table.replace_schema_metadata(None), sink, compression="zstd")
     return sink.getvalue()
+
+
+def series_bytes(record: Record, series: Series, suffix: str) -> bytes:
+    """Write `series_frame` as `.csv` or `.parquet`.
+
+    Raises
+    ------
+    OutputError
+        Another suffix is asked for.
+    """
+    if suffix == ".parquet":
+        return series_parquet(record, series)
+    if suffix == ".csv":
+        text: str = series_frame(record, series).to_csv(index=False, date_format="%Y-%m-%dT%H:%M:%S.%fZ")
+        return text.encode("utf-8")
+    raise OutputError(
+        Problem(
+            what="the series cannot be written in that format", found=suffix or "no suffix", expected=".csv or .parquet"
+        )
+    )

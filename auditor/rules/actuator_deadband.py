@@ -15,4 +15,5 @@ RULE = Rule(
     fires=fires,
     pack=lambda values, period: (values["delta"],),
     link="actuator",
+    links=("actuator",),
 )

@@ -70,6 +70,8 @@ class Rule:
         Default link, "sensor" or "actuator".
     threshold : str or None
         The setting that a log's resolution bounds from below (method, §5.4).
+    links : tuple of str
+        Links the rule makes sense on.
     predicts : bool
         True when the device runs the model beside the plant.
     """
@@ -85,6 +87,7 @@ class Rule:
     memory_rows: Callable[[Values, float], int] = lambda values, period: 0
     link: str = "sensor"
     threshold: str | None = None
+    links: tuple[str, ...] = ("sensor", "actuator")
     predicts: bool = False
 
     def complete(self, given: Values) -> dict[str, float]:

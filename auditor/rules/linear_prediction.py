@@ -47,8 +47,9 @@ RULE = Rule(
     name="linear-prediction",
     formula="|e − (e_s + slope_s · m h)| > delta, slope_s the mean slope over the window before the update",
     source="Suh, Sensors 7 (2007) 437",
-    wins="Ramps and slow swings: the receiver follows the announced slope instead of a stale value.",
-    loses="Noise makes the slope wrong unless the window is long; steps make it shoot past.",
+    wins="Ramps and slow swings that go on as announced: nothing is sent while they do.",
+    loses="The controller still acts on the value last sent, so a silent ramp is an error that grows; noise makes the "
+    "slope wrong unless the window is long, and steps make it shoot past.",
     settings=(
         SettingSpec(name="delta", unit="measurement", meaning="distance from the announced line that is sent"),
         SettingSpec(name="window_s", unit="s", meaning="stretch over which the slope is taken"),

@@ -24,7 +24,8 @@ RULE = Rule(
     formula="|y − ŷ| > delta, ŷ the identified model run from the last update at both ends",
     source="Lunze & Lehmann 2010; Garcia & Antsaklis 2013",
     wins="Slow plants whose answer to the actuator is well known: the move that control itself causes is not sent.",
-    loses="Needs the model on both devices; a wrong gain sends more, not less; loads that change often.",
+    loses="Needs the model on both devices; a wrong gain sends more, not less; loads that change often. The controller "
+    "acts on the value last sent: what goes as predicted is left standing.",
     settings=(SettingSpec(name="delta", unit="measurement", meaning="distance from the prediction that is sent"),),
     fires=fires,
     pack=lambda values, period: (values["delta"],),

@@ -197,6 +197,14 @@ def test_a_hand_on_the_actuator_is_not_explained_by_the_error() -> None:
     assert explained_by_error(rho, record) < 0.02
 
 
+def test_far_too_large_gains_do_not_explain_an_actuator_that_obeys_something_else() -> None:
+    record = simulate(PI)
+    elsewhere = 50.0 + 0.1 * np.cumsum(np.random.default_rng(4).standard_normal(len(record)))
+    rho = controller_residual(replace(record, u=elsewhere), replace(PI, gain=500.0)).rho
+    # Nearly all of rho is the stated controller's own answer to the error; none of the actuator is.
+    assert explained_by_error(rho, replace(record, u=elsewhere)) < 0.02
+
+
 def test_no_residual_is_not_explained() -> None:
     record = simulate(PI, n=100)
     assert explained_by_error(np.zeros(100), record) == 0.0

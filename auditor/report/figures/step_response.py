@@ -6,6 +6,8 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
+from auditor.errors import OutputError, Problem
+from auditor.identify.plant import Model
 from auditor.report.content import Content
 from auditor.report.figures import style
 from auditor.report.figures.record import heading
@@ -23,6 +25,22 @@ def compose(content: Content) -> Figure | None:
     signals = content.audit.loop.signals
     draw(figure.add_subplot(), step_responses(content.audit.model), clean(signals.measurement.unit))
     return figure
+
+
+def picture(model: Model, unit: str, suffix: str) -> bytes:
+    """Draw the step responses of a model alone, as the bytes of an `.svg` or `.png` file.
+
+    Raises
+    ------
+    OutputError
+        Another suffix is asked for.
+    """
+    if suffix not in (".svg", ".png"):
+        raise OutputError(Problem(what="no such picture format", found=suffix or "no suffix", expected=".png or .svg"))
+    with style.drawing():
+        figure = style.new_figure(2.7)
+        draw(figure.add_subplot(), step_responses(model), clean(unit))
+        return style.png(figure) if suffix == ".png" else style.svg(figure).encode("utf-8")
 
 
 def draw(axes: Axes, answers: StepResponses, unit: str) -> Axes:
