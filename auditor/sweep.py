@@ -109,7 +109,7 @@ def answer(
     whole = measured["whole"]
     unstable = diverged(lanes, bench)
     floor = log_floor(bench.record)
-    intervals = {name: _intervals(measured[name], bench.draws, floor) for name in ("whole", "first", "rest")}
+    intervals = {name: _intervals(setting, measured[name], bench.draws, floor) for name in ("whole", "first", "rest")}
     refused = refusal(setting, bench, whole, intervals["whole"], unstable[: bench.draws])
     replayed = Replay(
         setting=setting,
@@ -145,8 +145,14 @@ def _measure(bench: Bench, limits: Limits, lanes: Lanes, spans: Sequence[Span]) 
     return per_lane(total, bench.record, limits)
 
 
-def _intervals(lanes: dict[str, FloatArray], draws: int, floor: dict[str, float]) -> dict[str, tuple[float, float]]:
-    return {name: answer_interval(lanes[name], draws, floor[kind]) for name, kind in INTERVALS.items()}
+def _intervals(
+    setting: Setting, lanes: dict[str, FloatArray], draws: int, floor: dict[str, float]
+) -> dict[str, tuple[float, float]]:
+    found = {name: answer_interval(lanes[name], draws, floor[kind]) for name, kind in INTERVALS.items()}
+    if setting.rule == "periodic":
+        # A clock's count does not depend on the plant, nor on how finely the log was stored.
+        found["updates"] = (float(lanes["updates"][0]), float(lanes["updates"][0]))
+    return found
 
 
 def median_member(updates: FloatArray) -> int:

@@ -163,10 +163,15 @@ def _part(replay: Replay, part: str) -> tuple[Measures, dict[str, tuple[float, f
 
 
 def candidates(case: Case) -> list[int]:
-    """Event rules that the log can answer."""
-    return [
-        i for i, r in enumerate(case.replays) if r.answerable and r.trust != "none" and r.setting.rule != "periodic"
-    ]
+    """Event rules that the log can answer.
+
+    Rules on the link to the actuator need a controller that sits beside the sensor and sees every sample. Where rules
+    on the sensor's link were replayed too, the record does not say which link is to be relieved, and only the sensor's
+    are recommended; ask for the others alone, under [[rules]], to have them decided on.
+    """
+    events = [i for i, r in enumerate(case.replays) if r.setting.rule != "periodic"]
+    on_sensor = [i for i in events if case.replays[i].setting.link == "sensor"]
+    return [i for i in on_sensor or events if case.replays[i].answerable and case.replays[i].trust != "none"]
 
 
 def recommend(case: Case) -> Recommendation:
@@ -298,4 +303,6 @@ def _why_switch(case: Case, replay: Replay) -> tuple[str, ...]:
             f"The best slowed-down clock with no more updates has {number(replay.periodic_rms_error)} {unit}."
         )
     reasons.append("No danger flag stands on either part.")
+    if replay.setting.link == "actuator":
+        reasons.append("It saves messages to the actuator only: the controller must sit beside the sensor.")
     return tuple(reasons)

@@ -187,3 +187,15 @@ def test_cautions_are_always_there() -> None:
     case_ = case(replay(0.9, 0.02))
     assert decide(case_, recommend(case_)).cautions == CAUTIONS
     assert any("IEC 61511" in c for c in CAUTIONS)
+
+
+def on_actuator(saved: float, rms: float) -> Replay:
+    return replay(saved, rms, setting=Setting(rule="actuator-deadband", link="actuator", values={"delta": 1.0}))
+
+
+def test_rules_on_the_actuators_link_are_recommended_only_when_asked_for_alone() -> None:
+    both = case(replay(0.8, 0.02), on_actuator(0.95, 0.016))
+    assert recommend(both).replay == 0
+    what, why = decision(case(on_actuator(0.95, 0.016)))
+    assert what == "switch"
+    assert "beside the sensor" in why

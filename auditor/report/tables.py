@@ -26,7 +26,7 @@ class Table:
     numeric : frozenset of int
         Columns of numbers.
     groups : tuple of (str, tuple of Row)
-        Rows under their heading; an empty heading stands for none.
+        Rows under their heading; an empty heading stands for none. The last cell of a short row spans the rest.
     """
 
     head: Row
@@ -173,8 +173,8 @@ def _replay_row(content: Content, index: int) -> Row:
     first = (str(index), settings_text(replay.setting, content.audit.loop))
     naive = number(replay.naive_updates)
     if not replay.answerable:
-        told = f"not answered: {clean(replay.refusal or 'no reason')}"
-        return (*first, "–", "–", "–", naive, "–", "–", "–", "none", told)
+        told = f"not answered: {clean(replay.refusal or 'no reason')} (count without a model: {naive})"
+        return (*first, told)
     m, ends = replay.measures, replay.interval90
     return (
         *first,

@@ -35,7 +35,8 @@ def telling_window(content: Content) -> Window | None:
     replay = content.replay
     if replay is None or replay.series is None or not content.audit.record.in_span.any():
         return None
-    own = [flag for flag in content.audit.flags if flag.replay == content.focus]
+    # A stretch without data shows nothing about the setting.
+    own = [flag for flag in content.audit.flags if flag.replay == content.focus and flag.cause != "blind"]
     worst = min(own, key=lambda f: (f.severity != "danger", -f.values.get("share", 0.0), f.start), default=None)
     if worst is not None and (worst.severity == "danger" or worst.values.get("share", 0.0) >= _TELLING_SHARE):
         why = f"the most severe flag of this setting ({worst.cause}, {worst.severity})"
