@@ -75,7 +75,7 @@ class Audit:
     @property
     def answerable(self) -> bool:
         """False when the log was read but does not carry enough to answer anything."""
-        return self.model is not None and self.model.trust != "none"
+        return self.model is not None and self.model.trust != "none" and bool(self.replays)
 
 
 def audit(
@@ -168,7 +168,9 @@ def _shown(recommendation: Recommendation, replayed: Replayed) -> set[int]:
     return {*chosen, *dangerous[:SHOWN_DANGERS]}
 
 
-def _without_model(loop: Loop, record: Record, error: CannotAnswerError, provenance: Provenance) -> Audit:
+def _without_model(
+    loop: Loop, record: Record, error: CannotAnswerError, provenance: Provenance, tau_cl_s: float | None = None
+) -> Audit:
     """The complete report of a log that was read but carries no loop to identify."""
     controller_limits = _bare_controller(record)
     spans = record.spans
@@ -185,15 +187,15 @@ def _without_model(loop: Loop, record: Record, error: CannotAnswerError, provena
         replays=(),
         flags=(),
         recommendation=Recommendation(replay=None, reasons=("No rule was replayed: there is no model of the loop.",)),
-        verdict=_undecided(tuple(str(p) for p in error.problems), suggest(record, loop)),
+        verdict=_undecided(tuple(str(p) for p in error.problems), suggest(record, loop, tau_cl_s)),
         provenance=provenance,
     )
 
 
 def _without_counted(loop: Loop, record: Record, model: Model, provenance: Provenance) -> Audit:
     """The complete report of a log whose every span is mostly warm-up."""
-    audit_ = _without_model(loop, record, CannotAnswerError(all_warm_up(record, model)), provenance)
-    return replace(audit_, model=model)
+    error = CannotAnswerError(all_warm_up(record, model))
+    return replace(_without_model(loop, record, error, provenance, model.tau_cl_s), model=model)
 
 
 def _undecided(reasons: Sequence[str], experiment: str) -> Verdict:

@@ -58,7 +58,7 @@ def replay_all(
     outcomes = sweep(bench, loop, settings, parts, look, jobs=jobs, progress=progress)
     curve = _curve(bench, loop, parts, outcomes, jobs, progress)
     return Replayed(
-        replays=tuple(_compared(outcome, curve) for outcome in outcomes),
+        replays=tuple(_compared(outcome, curve, model.trust) for outcome in outcomes),
         flags=tuple(flag for outcome in outcomes for flag in outcome.inspected),
     )
 
@@ -85,17 +85,23 @@ def _curve(
     return clock_curve(bench, loop, parts, every, jobs=jobs, progress=progress)
 
 
-def _compared(outcome: Outcome[tuple[Flag, ...]], curve: ClockCurve) -> Replay:
+def _compared(outcome: Outcome[tuple[Flag, ...]], curve: ClockCurve, model_trust: str) -> Replay:
     found = {part: compare(curve, part, outcome.counts[part], outcome.squares[part]) for part in outcome.counts}
     whole = found["whole"]
     return replace(
         outcome.replay,
+        trust=_least(outcome.replay.trust, model_trust),
         against_periodic=whole.outcome,
         periodic_rms_error=whole.clock_rms,
         rms_difference90=whole.difference90,
         against_periodic_first=found["first"].outcome,
         against_periodic_rest=found["rest"].outcome,
     )
+
+
+def _least(*levels: str) -> str:
+    """No answer can be trusted further than the model it rests on."""
+    return min(levels, key=("none", "limited", "good").index)
 
 
 def replay(record: Record, model: Model, rule: str, *, loop: Loop | None = None, **settings: float) -> Replay:

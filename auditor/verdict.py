@@ -148,8 +148,13 @@ def _dangers(case: Case, index: int, part: str) -> tuple[str, str]:
     found = [f for f in case.flags if f.replay == index and f.severity == "danger" and _touches(f, spans)]
     if not found:
         return "holds", ""
+    # Leaving the limits is what an owner asks about first.
+    found.sort(key=lambda f: (f.cause != "limit", f.start))
     causes = ", ".join(dict.fromkeys(f.cause for f in found))
-    return "fails", f"{len(found)} danger flag{'s' if len(found) > 1 else ''} ({causes}); the first: {found[0].detail}"
+    return (
+        "fails",
+        f"{len(found)} danger flag{'s' if len(found) > 1 else ''} ({causes}); first of all: {found[0].detail}",
+    )
 
 
 def _touches(flag: Flag, spans: Sequence[Span]) -> bool:
@@ -204,8 +209,8 @@ def _why_chosen(case: Case, chosen: int, found: Findings, *, reserve: bool) -> t
         )
     if reserve:
         return (
-            f"On the first part of the record it has the fewest updates of all settings that keep what is asked for with "
-            f"{percent(1 - RESERVE)} of the accepted error in reserve: {facts}.",
+            f"On the first part of the record it has the fewest updates of all settings that keep what is asked for "
+            f"with {percent(1 - RESERVE)} of the accepted error in reserve: {facts}.",
         )
     return (
         f"On the first part of the record it has the smallest error of the settings that keep what is asked for; none "
@@ -257,15 +262,20 @@ def _cannot_decide(case: Case) -> tuple[str, ...]:
         why = case.model.reasons if case.model is not None else ()
         reasons += [*why, f"No model of the loop can be trusted. {case.experiment}"]
     if not case.loop.limits.stated:
-        reasons.append(
-            "No limits and no band are stated under [limits]: they are the owner's, and without them no danger can be told."
-        )
+        missing = _missing(case)
+        reasons.append(f"[limits] states no {missing}: it is the owner's, and without it no danger can be told.")
     if case.model is not None and case.hours < case.loop.accept.min_hours:
         reasons.append(
-            f"{number(case.hours)} h can be counted after the warm-up; {number(case.loop.accept.min_hours)} h are asked "
-            f"for: {number(case.loop.accept.min_hours - case.hours)} h more would settle it."
+            f"{number(case.hours)} h can be counted after the warm-up; {number(case.loop.accept.min_hours)} h are "
+            f"asked for: {number(case.loop.accept.min_hours - case.hours)} h more would settle it."
         )
     return tuple(reasons)
+
+
+def _missing(case: Case) -> str:
+    limits = case.loop.limits
+    bounds = () if limits.low is not None or limits.high is not None else ("low or high limit",)
+    return " and no ".join((*bounds, *(() if limits.band is not None else ("band",))))
 
 
 def _refusals(case: Case) -> tuple[str, ...]:
@@ -295,8 +305,8 @@ def _why_switch(case: Case, replay: Replay) -> tuple[str, ...]:
         f"{setting_label(replay)} would have saved {percent(replay.measures.saved_fraction)} of the updates over "
         f"{number(case.hours)} h ({percent(replay.first.saved_fraction)} on the part it was chosen on, "
         f"{percent(replay.rest.saved_fraction)} on the rest).",
-        f"Its RMS error is {number(replay.measures.rms_error)} {unit} (90 % interval {number(low)}…{number(high)}); the "
-        f"record's is {number(record)} {unit}, and at most {number(case.max_rms)} {unit} is accepted.",
+        f"Its RMS error is {number(replay.measures.rms_error)} {unit} (90 % interval {number(low)}…{number(high)}); "
+        f"the record's is {number(record)} {unit}, and at most {number(case.max_rms)} {unit} is accepted.",
     ]
     if replay.periodic_rms_error is not None:
         reasons.append(

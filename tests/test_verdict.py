@@ -49,7 +49,8 @@ def measures(saved: float, rms: float, hours: float = HOURS) -> Measures:
     return Measures(
         updates=(1 - saved) * hours * 60, updates_per_hour=60 * (1 - saved), saved_fraction=saved, rms_error=rms,
         iae_per_hour=rms, max_abs_error=3 * rms, outside_band_s=0.0, outside_limits_s=0.0, min_gap_s=60.0,
-        median_gap_s=600.0, max_gap_s=3600.0, peak_updates_per_hour=10.0, actuator_travel=1.0, saturated_s=0.0, hours=hours,
+        median_gap_s=600.0, max_gap_s=3600.0, peak_updates_per_hour=10.0, actuator_travel=1.0, saturated_s=0.0,
+        hours=hours,
     )  # fmt: skip
 
 
@@ -153,10 +154,11 @@ def test_an_interval_that_straddles_the_bound_is_undecided_and_names_the_experim
     [
         ({"model": model("none")}, "trusted"),
         ({"model": None}, "trusted"),
-        ({"loop": loop(limits=Limits())}, "limits"),
+        ({"loop": loop(limits=Limits())}, "no low or high limit and no band"),
+        ({"loop": loop(limits=Limits(band=0.05))}, "states no low or high limit:"),
         ({"loop": loop(accept=Accept(min_hours=200.0))}, "100 h more"),
     ],
-    ids=["trust", "model", "limits", "hours"],
+    ids=["trust", "model", "limits", "limit", "hours"],
 )
 def test_what_cannot_be_decided_is_undecided(more: dict[str, object], word: str) -> None:
     what, why = decision(case(replay(0.9, 0.02), **more))

@@ -56,9 +56,7 @@ class Scene:
     noise: np.ndarray
 
     def run(self, decide=None) -> Simulation:
-        return simulate(
-            self.plant, PID, self.setpoint, self.load, self.noise, period=PERIOD, decide=decide
-        )
+        return simulate(self.plant, PID, self.setpoint, self.load, self.noise, period=PERIOD, decide=decide)
 
     def send_on_delta(self, delta: float) -> Simulation:
         return self.run(send_on_delta(delta, longest=120))

@@ -64,7 +64,13 @@ class Ensemble:
 
 
 def estimate(
-    record: Record, controller: Pid, *, plant: str | None, seed: int = 1, quick: bool = False, workers: int = 2,
+    record: Record,
+    controller: Pid,
+    *,
+    plant: str | None,
+    seed: int = 1,
+    quick: bool = False,
+    workers: int = 2,
     progress: Progress = silent,
 ) -> Ensemble:
     """Return plants that could have made the record with this controller.
@@ -108,7 +114,11 @@ def estimate(
 
 
 def _runs(
-    spectra: Spectrum, kinds: Family, weights: Tuning, seeds: Sequence[np.random.SeedSequence], workers: int,
+    spectra: Spectrum,
+    kinds: Family,
+    weights: Tuning,
+    seeds: Sequence[np.random.SeedSequence],
+    workers: int,
     progress: Progress,
 ) -> list[sampler.Members]:
     """All runs, on threads (the compiled generations release the lock), in the order of their seeds."""

@@ -127,7 +127,11 @@ def to_plant(
     A, B0, B1, d = _sampled(M, float(x[points.DELAY]))
     static, ramp = _gains(x, oscillates, kinds.integrator_below)
     return Plant(
-        A=A, B0=B0, B1=B1, C=read_only(C[1:] / gain), delay=d,
+        A=A,
+        B0=B0,
+        B1=B1,
+        C=read_only(C[1:] / gain),
+        delay=d,
         structure="oscillatory" if oscillates else "lags",
         delay_s=float(x[points.DELAY]) * period,
         gain=None if static is None else static / gain,

@@ -127,7 +127,8 @@ class Model:
     dropped : int
         Draws dropped because the recorded loop would be unstable under them.
     explained_percent, explained_held_out_percent : float or None
-        100·(1 − ‖y − ŷ‖/‖y − ȳ‖) of the free run over the record, and over its last part by a plant fitted on the first.
+        100·(1 − ‖y − ŷ‖/‖y − ȳ‖) of the free run over the record, and over its last part by a plant fitted on the
+        first.
     pure_regulation : bool
         True when the log holds no usable setpoint move.
     trust : str

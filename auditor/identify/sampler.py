@@ -51,7 +51,10 @@ class Members:
 
 
 def run(
-    spectrum: Spectrum, kinds: Family, weights: Tuning, seed: int | np.random.SeedSequence,
+    spectrum: Spectrum,
+    kinds: Family,
+    weights: Tuning,
+    seed: int | np.random.SeedSequence,
     observe: Callable[[float], None] = lambda share: None,
 ) -> Members:
     """Return the members of one run.

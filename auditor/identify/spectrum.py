@@ -88,9 +88,15 @@ def spectrum(record: Record, controller: Pid) -> Spectrum:
     order = np.argsort(w, kind="stable")
     w = w[order]
     return Spectrum(
-        w=read_only(w), y=read_only(y[order]), u=read_only(u[order]), weight=read_only(weight[order]),
-        span=read_only(span[order]), edges=read_only(_edges(w)), closed=closed_share(record, spans),
-        controller=controller, period=record.period,
+        w=read_only(w),
+        y=read_only(y[order]),
+        u=read_only(u[order]),
+        weight=read_only(weight[order]),
+        span=read_only(span[order]),
+        edges=read_only(_edges(w)),
+        closed=closed_share(record, spans),
+        controller=controller,
+        period=record.period,
     )
 
 

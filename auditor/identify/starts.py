@@ -129,5 +129,3 @@ def _no_start() -> Problem:
         found="all random starts are unstable",
         do="Check the controller's gain, its sign, and its integral time, and that u is the actuator of this loop.",
     )
-
-

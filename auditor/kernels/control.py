@@ -42,7 +42,7 @@ def clip(x: float, low: float, high: float) -> float:
 
 
 @compiled
-def begin(control: FloatArray, count: IntArray, now: FloatArray, u0: float, pid: Any, form: Any) -> None:
+def begin(control: FloatArray, now: FloatArray, u0: float, pid: Any, form: Any) -> None:
     """Start a span from the record: I = u0 − K e0, D = 0, the actuator where it was."""
     for lane in range(now.shape[1]):
         e = deadbanded(now[R.ERROR, lane], pid[R.DEADBAND])
@@ -57,8 +57,6 @@ def begin(control: FloatArray, count: IntArray, now: FloatArray, u0: float, pid:
         control[R.POSITION, lane] = u0
         control[R.SETPOINT_THEN, lane] = r
         control[R.DEVIATION, lane] = 0.0
-        count[R.SINCE_RUN, lane] = 0
-        count[R.LATCHED, lane] = 0
 
 
 @compiled

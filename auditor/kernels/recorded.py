@@ -37,11 +37,10 @@ def explain_span(
     now = np.zeros((rows.SIGNALS, 1))
     control = np.zeros((rows.CONTROL_ROWS, 1))
     free = np.zeros((rows.CONTROL_ROWS, 1))
-    count = np.zeros((rows.COUNT_ROWS, 1), dtype=np.int64)
     unlimited = pid.copy()
     unlimited[rows.LOW], unlimited[rows.HIGH] = -np.inf, np.inf
     see(y[start], r[start], now)
-    begin(control, count, now, u[start], pid, form)
+    begin(control, now, u[start], pid, form)
     rho[start], v[start] = 0.0, u[start]
     for k in range(start + 1, stop):
         free[:, :] = control
@@ -69,7 +68,6 @@ def replay_every_sample(
     """Replay samples start…stop−1 with an update at each (2.1, 3.1–3.4); fill the replayed measurement."""
     now = np.zeros((rows.SIGNALS, 1))
     control = np.zeros((rows.CONTROL_ROWS, 1))
-    count = np.zeros((rows.COUNT_ROWS, 1), dtype=np.int64)
     ring = delay + 2
     past = np.zeros(ring)
     dx = np.zeros(len(C))
@@ -83,7 +81,7 @@ def replay_every_sample(
         replayed[k] = y[k] + away
         if t == 0:
             see(y[k], r[k], now)
-            begin(control, count, now, u[k], pid, form)
+            begin(control, now, u[k], pid, form)
         else:
             run_lane(0, replayed[k], r[k], rho[k], 1.0, 0.0, control, pid, form)
             control[rows.COMMAND, 0] = control[rows.WOULD, 0]

@@ -54,24 +54,25 @@ def observe(
     for lane in range(quiet, dx.shape[1]):
         now[R.MEASUREMENT, lane] = y + noise[column[lane]] + now[R.MEASUREMENT, lane]
     for lane in range(dx.shape[1]):
-        now[R.SETPOINT, lane] = r
         now[R.ERROR, lane] = r - now[R.MEASUREMENT, lane]
+    if now[R.SETPOINT, 0] != r:
+        now[R.SETPOINT, :] = r
 
 
 @compiled
 def predict(now: FloatArray, device: FloatArray, offset: FloatArray, C: FloatArray) -> None:
     """ŷ of the device's model: its state (rows 0…n−1 of `device`) seen through C, plus the offset set at updates."""
-    n = len(C)
     for lane in range(now.shape[1]):
-        value = offset[0, lane]
-        for i in range(n):
-            value += C[i] * device[i, lane]
-        now[R.PREDICTED, lane] = value
+        now[R.PREDICTED, lane] = offset[0, lane]
+    for i in range(len(C)):
+        c = C[i]
+        for lane in range(now.shape[1]):
+            now[R.PREDICTED, lane] += c * device[i, lane]
 
 
 @compiled
 def correct(
-    now: FloatArray, updated: IntArray, device: FloatArray, offset: FloatArray, C: FloatArray, floor: float
+    now: FloatArray, which: IntArray, updates: int, device: FloatArray, offset: FloatArray, C: FloatArray, floor: float
 ) -> None:
     """At an update both ends learn y: set the offset, and blame a constant load for what the model missed.
 
@@ -79,73 +80,74 @@ def correct(
     (Lunze & Lehmann 2010, disturbance estimator); the response is floored so that noise is not amplified.
     """
     n = len(C)
-    for lane in range(now.shape[1]):
+    for at in range(updates):
+        lane = which[at]
         missed = now[R.MEASUREMENT, lane] - now[R.PREDICTED, lane]
         response = 0.0
         for i in range(n):
             response += C[i] * device[n + i, lane]
+            device[n + i, lane] = 0.0
         response = response if abs(response) > abs(floor) else floor
-        sent = updated[lane] == 1
-        offset[0, lane] = offset[0, lane] + missed if sent else offset[0, lane]
-        offset[1, lane] = offset[1, lane] + missed / response if sent else offset[1, lane]
-        for i in range(n):
-            device[n + i, lane] = 0.0 if sent else device[n + i, lane]
+        offset[0, lane] += missed
+        offset[1, lane] += missed / response
 
 
 @compiled
 def advance_device(
-    device: FloatArray,
-    following: FloatArray,
-    offset: FloatArray,
-    inputs: FloatArray,
-    k: int,
-    u0: float,
-    A: FloatArray,
-    B0: FloatArray,
-    B1: FloatArray,
-    delay: int,
-) -> None:
-    """One period of the device's model, driven by the positions since the span began and by its load estimate."""
-    n = len(B0)
-    ring = inputs.shape[0]
-    late = k - delay
-    later = late - 1
-    for lane in range(device.shape[1]):
-        new = inputs[late % ring, lane] - u0 if late >= 0 else 0.0
-        old = inputs[later % ring, lane] - u0 if later >= 0 else 0.0
-        for i in range(n):
-            value = B0[i] * (new + offset[1, lane]) + B1[i] * (old + offset[1, lane])
-            unit = B0[i] + B1[i]
-            for j in range(n):
-                value += A[i, j] * device[j, lane]
-                unit += A[i, j] * device[n + j, lane]
-            following[i, lane] = value
-            following[n + i, lane] = unit
-    device[:, :] = following
+    device: FloatArray, following: FloatArray, offset: FloatArray, new: FloatArray, old: FloatArray, u0: float, t: int,
+    A: FloatArray, B0: FloatArray, B1: FloatArray, delay: int,
+) -> None:  # fmt: skip
+    """One period of the device's model, driven by the positions since the span began and by its load estimate.
+
+    `new` and `old` are the positions d and d + 1 samples ago; before the span the model rests.
+    """
+    n, lanes = len(B0), device.shape[1]
+    for i in range(n):
+        b0, b1 = B0[i], B1[i]
+        for lane in range(lanes):
+            recent = new[lane] - u0 if t >= delay else 0.0
+            before = old[lane] - u0 if t > delay else 0.0
+            following[i, lane] = b0 * (recent + offset[1, lane]) + b1 * (before + offset[1, lane])
+            following[n + i, lane] = b0 + b1
+        for j in range(n):
+            a = A[i, j]
+            if a != 0.0:
+                for lane in range(lanes):
+                    following[i, lane] += a * device[j, lane]
+                    following[n + i, lane] += a * device[n + j, lane]
+    for i in range(2 * n):
+        for lane in range(lanes):
+            device[i, lane] = following[i, lane]
 
 
 @compiled
 def watch(now: FloatArray, control: FloatArray, form: Any) -> None:
     """Fill the row a rule watches."""
-    for lane in range(now.shape[1]):
-        value = now[R.ERROR, lane]
-        value = now[R.MEASUREMENT, lane] if form[R.WATCH] == R.WATCH_MEASUREMENT else value
-        value = control[R.WOULD, lane] if form[R.WATCH] == R.WATCH_COMMAND else value
-        now[R.WATCHED, lane] = value
+    if form[R.WATCH] == R.WATCH_COMMAND:
+        for lane in range(now.shape[1]):
+            now[R.WATCHED, lane] = control[R.WOULD, lane]
+    else:
+        row = R.MEASUREMENT if form[R.WATCH] == R.WATCH_MEASUREMENT else R.ERROR
+        for lane in range(now.shape[1]):
+            now[R.WATCHED, lane] = now[row, lane]
 
 
 @compiled
 def decide(
-    first: bool, since: IntArray, fired: Any, gap: IntArray, silence: IntArray, count: IntArray, updated: IntArray
-) -> None:
-    """Guards around the rule: first sample, min_gap (the request stays latched), max_silence, then the rule."""
+    first: bool, since: IntArray, fired: Any, gap: IntArray, silence: IntArray, latched: Any, which: IntArray
+) -> int:
+    """Guards around the rule: first sample, min_gap (the request stays latched), max_silence, then the rule.
+
+    Lists the lanes that update in `which` and returns how many they are.
+    """
+    updates = 0
     for lane in range(len(since)):
-        asked = 1 if (fired[lane] != 0 or count[R.LATCHED, lane] == 1) else 0
-        due = 1 if (asked == 1 or since[lane] >= silence[lane]) else 0
-        due = 0 if since[lane] < gap[lane] else due
-        due = 1 if first else due
-        updated[lane] = due
-        count[R.LATCHED, lane] = 0 if due == 1 else asked
+        asked = (fired[lane] | latched[lane]) != 0
+        due = first or (since[lane] >= gap[lane] and (asked or since[lane] >= silence[lane]))
+        latched[lane] = 1 if (asked and not due) else 0
+        which[updates] = lane
+        updates += 1 if due else 0
+    return updates
 
 
 @compiled
@@ -154,82 +156,93 @@ def run_all(
     rho: float,
     alpha: FloatArray,
     control: FloatArray,
-    count: IntArray,
+    since_run: IntArray,
     pid: Any,
     form: Any,
 ) -> None:
     """Run every controller (link at the actuator: the controller sees every sample)."""
     for lane in range(now.shape[1]):
-        m = count[R.SINCE_RUN, lane]
+        m = since_run[lane]
         step = alpha[min(m, len(alpha) - 1)]
         run_lane(lane, now[R.MEASUREMENT, lane], now[R.SETPOINT, lane], rho, float(m), step, control, pid, form)
+        since_run[lane] = 0
 
 
 @compiled
-def run_asked(
+def receive(now: FloatArray, which: IntArray, updates: int, control: FloatArray) -> None:
+    """Hand the measurement to the controllers that got a message."""
+    for at in range(updates):
+        lane = which[at]
+        control[R.RECEIVED, lane] = now[R.MEASUREMENT, lane]
+
+
+@compiled
+def run_one(
+    lane: int,
     now: FloatArray,
-    updated: IntArray,
     rho: float,
     alpha: FloatArray,
     control: FloatArray,
-    count: IntArray,
+    since_run: IntArray,
     pid: Any,
     form: Any,
 ) -> None:
-    """Run the controllers that got a message, or may run without one, on the measurement they last received."""
+    """Run one controller on the measurement it last received, and let its command act."""
+    m = since_run[lane]
+    step = alpha[min(m, len(alpha) - 1)]
+    run_lane(lane, control[R.RECEIVED, lane], now[R.SETPOINT, lane], rho, float(m), step, control, pid, form)
+    control[R.COMMAND, lane] = control[R.WOULD, lane]
+    since_run[lane] = 0
+
+
+@compiled
+def run_unasked(
+    now: FloatArray, rho: float, alpha: FloatArray, control: FloatArray, since_run: IntArray, pid: Any, form: Any
+) -> None:
+    """Run the controllers that got no message but run between messages, or follow a setpoint that has moved."""
     for lane in range(now.shape[1]):
-        r = now[R.SETPOINT, lane]
-        moved = form[R.FOLLOW_SETPOINT] == 1 and abs(r - control[R.SETPOINT_THEN, lane]) > pid[R.SETPOINT_CHANGE]
-        if updated[lane] == 1:
-            control[R.RECEIVED, lane] = now[R.MEASUREMENT, lane]
-        if updated[lane] == 1 or form[R.BETWEEN_RUN] == 1 or moved:
-            m = count[R.SINCE_RUN, lane]
-            step = alpha[min(m, len(alpha) - 1)]
-            run_lane(lane, control[R.RECEIVED, lane], r, rho, float(m), step, control, pid, form)
-            control[R.COMMAND, lane] = control[R.WOULD, lane]
-            count[R.SINCE_RUN, lane] = 0
+        moved = abs(now[R.SETPOINT, lane] - control[R.SETPOINT_THEN, lane]) > pid[R.SETPOINT_CHANGE]
+        if since_run[lane] > 0 and (form[R.BETWEEN_RUN] == 1 or (form[R.FOLLOW_SETPOINT] == 1 and moved)):
+            run_one(lane, now, rho, alpha, control, since_run, pid, form)
 
 
 @compiled
-def send_commands(updated: IntArray, control: FloatArray) -> None:
+def send_commands(which: IntArray, updates: int, control: FloatArray) -> None:
     """Commands travel only on an update (link at the actuator)."""
-    for lane in range(len(updated)):
-        control[R.COMMAND, lane] = control[R.WOULD, lane] if updated[lane] == 1 else control[R.COMMAND, lane]
+    for at in range(updates):
+        control[R.COMMAND, which[at]] = control[R.WOULD, which[at]]
 
 
 @compiled
-def remember(now: FloatArray, sent: FloatArray, since: IntArray, updated: IntArray) -> None:
-    """Keep what was sent, and count the samples since."""
+def remember(now: FloatArray, sent: FloatArray, since: IntArray, which: IntArray, updates: int, row: Any) -> None:
+    """Keep what was sent, count the samples since, and mark the update in the results' row."""
+    for at in range(updates):
+        lane = which[at]
+        for signal in range(now.shape[0]):
+            sent[signal, lane] = now[signal, lane]
+        since[lane] = 0
+        row[lane] = 1
     for lane in range(len(since)):
-        if updated[lane] == 1:
-            for row in range(now.shape[0]):
-                sent[row, lane] = now[row, lane]
-    for lane in range(len(since)):
-        since[lane] = 1 if updated[lane] == 1 else since[lane] + 1
+        since[lane] += 1
 
 
 @compiled
 def note(
     u: float,
     now: FloatArray,
-    updated: IntArray,
     control: FloatArray,
-    count: IntArray,
+    since_run: IntArray,
     past: FloatArray,
-    inputs: FloatArray,
     out_y: FloatArray,
     out_u: FloatArray,
-    out_updated: Any,
 ) -> None:
-    """Write the sample down: row views of the histories and of the results."""
-    for lane in range(len(updated)):
+    """Write the sample down: row views of the history and of the results."""
+    for lane in range(len(past)):
         away = control[R.DEVIATION, lane]
         past[lane] = away
-        inputs[lane] = u + away
         out_u[lane] = u + away
         out_y[lane] = now[R.MEASUREMENT, lane]
-        out_updated[lane] = updated[lane]
-        count[R.SINCE_RUN, lane] += 1
+        since_run[lane] += 1
 
 
 @compiled
@@ -308,60 +321,64 @@ def replay_span(
     dA … floor
         The device's own model, shared by all lanes; used when `predicting`.
     out_y, out_u, out_updated : ndarray, shape (N, lanes)
-        Rows start…stop−1 are written.
+        Rows start…stop−1 are written; `out_updated` must be zero before.
     """
     n, lanes = C.shape
     law, shape = settings_of(pid), choices_of(form)
     used = occupied(A)
     quiet = leading_zeros(column)
+    between = shape[R.BETWEEN_RUN] == 1 or shape[R.FOLLOW_SETPOINT] == 1
     dn = len(dC)
-    ring = delay.max() + 2
+    ring = max(delay.max(), d_delay) + 2
     past = np.zeros((ring, lanes))
-    inputs = np.zeros((d_delay + 2, lanes))
     places = (ring - delay) % ring
     acting = np.zeros((2, lanes))
     dx = np.zeros((n, lanes))
     following = np.zeros((n, lanes))
     device = np.zeros((2 * dn, lanes))
     device_next = np.zeros((2 * dn, lanes))
+    positions = np.zeros((ring, lanes))
     offset = np.zeros((2, lanes))
     now = np.zeros((R.SIGNALS, lanes))
     sent = np.zeros((R.SIGNALS, lanes))
     memory = np.zeros((memory_rows, lanes))
     control = np.zeros((R.CONTROL_ROWS, lanes))
-    count = np.zeros((R.COUNT_ROWS, lanes), dtype=np.int64)
     since = np.zeros(lanes, dtype=np.int64)
-    updated = np.zeros(lanes, dtype=np.int64)
+    since_run = np.zeros(lanes, dtype=np.int64)
+    latched = np.zeros(lanes, dtype=np.uint8)
     fired = np.zeros(lanes, dtype=np.uint8)
+    which = np.zeros(lanes + 1, dtype=np.int64)
     for k in range(start, stop):
         first = k == start
         t = k - start
         observe(y[k], r[k], noise[k], column, quiet, quantum, C, dx, now)
         if first:
-            begin(control, count, now, u[k], law, shape)
+            begin(control, now, u[k], law, shape)
             offset[0, :] = now[R.MEASUREMENT, :]
         elif shape[R.LINK_ACTUATOR] == 1:
-            run_all(now, rho[k], alpha, control, count, law, shape)
-            count[R.SINCE_RUN, :] = 0
+            run_all(now, rho[k], alpha, control, since_run, law, shape)
         if predicting:
             predict(now, device, offset, dC)
         watch(now, control, shape)
         fires(now, sent, since, memory, settings, fired)
-        decide(first, since, fired, gap, silence, count, updated)
+        updates = decide(first, since, fired, gap, silence, latched, which)
         if shape[R.LINK_ACTUATOR] == 1:
-            send_commands(updated, control)
+            send_commands(which, updates, control)
         elif not first:
-            run_asked(now, updated, rho[k], alpha, control, count, law, shape)
+            receive(now, which, updates, control)
+            for at in range(updates):
+                run_one(which[at], now, rho[k], alpha, control, since_run, law, shape)
+            if between:
+                run_unasked(now, rho[k], alpha, control, since_run, law, shape)
         if predicting:
-            correct(now, updated, device, offset, dC, floor)
-        remember(now, sent, since, updated)
+            correct(now, which, updates, device, offset, dC, floor)
+        remember(now, sent, since, which, updates, out_updated[k])
         if not first:
             move(control, u[k], law)
-        note(
-            u[k], now, updated, control, count, past[t % ring], inputs[t % len(inputs)], out_y[k], out_u[k],
-            out_updated[k],
-        )  # fmt: skip
+        note(u[k], now, control, since_run, past[t % ring], out_y[k], out_u[k])
         recall(past, places, acting)
         advance(used, A, B0, B1, acting, dx, following)
         if predicting:
-            advance_device(device, device_next, offset, inputs, t, u[start], dA, dB0, dB1, d_delay)
+            positions[t % ring, :] = out_u[k, :]
+            new, old = positions[(t - d_delay) % ring], positions[(t - d_delay - 1) % ring]
+            advance_device(device, device_next, offset, new, old, u[start], t, dA, dB0, dB1, d_delay)

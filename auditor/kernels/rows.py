@@ -23,11 +23,6 @@ WOULD = 8  # the command computed at this sample, sent or not
 DEVIATION = 9  # replayed less recorded position
 CONTROL_ROWS = 10
 
-# count: integer state, (rows, lanes)
-SINCE_RUN = 0  # samples since the controller last ran
-LATCHED = 1  # a request held back by min_gap
-COUNT_ROWS = 2
-
 # pid: one array of settings shared by all lanes
 GAIN = 0
 INTEGRAL_STEP = 1  # K h / Ti

@@ -125,7 +125,7 @@ def test_unknown_rule_is_three_before_anything_is_computed(loopfile: Path, capsy
     assert "identify" not in told
 
 
-def test_audit_writes_its_files_and_prints_the_decision(loopfile: Path, modelfile: Path, tmp_path: Path, capsys) -> None:
+def test_audit_writes_its_files_and_prints_the_decision(loopfile: Path, modelfile: Path, tmp_path, capsys) -> None:
     out = tmp_path / "out"
     assert run(["audit", str(loopfile), "--model", str(modelfile), "--out", str(out), "--quick"]) == 0
     captured = capsys.readouterr()

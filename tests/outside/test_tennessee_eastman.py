@@ -121,7 +121,7 @@ def test_a_made_up_controller_earns_no_trust_even_where_the_plant_is_found(
     eastman: Eastman, audited: Audit, measured: int, gain: float, integral_time: str,
     gain_of_plant: tuple[float, float], reached: float,
 ) -> None:  # fmt: skip
-    stated = controller(gain, integral_time) + "\n            [limits]\n            band = 1.0"
+    stated = controller(gain, integral_time) + "\n            [limits]\n            high = 1000\n            band = 2.0"
     code, result, folder = audited(eastman.loop("d00_te", measured, 9, more=stated))
     assert code == CANNOT_ANSWER
     assert result["model"]["trust"] == "none"

@@ -47,9 +47,10 @@ def regression(record: Record, batches: slice) -> tuple[Plant, float]:
 
 
 def one_lag(a: float, b: float) -> Plant:
+    load = Load(entry="input", phi=0.9, walk=0.0, noise=0.0)
     return Plant(
         A=np.array([[a]]), B0=np.array([b]), B1=np.zeros(1), C=np.ones(1), delay=0, structure="lags", delay_s=0.0,
-        gain=b / (1.0 - a), gain_per_s=None, time_constants_s=(), load=Load(entry="input", phi=0.9, walk=0.0, noise=0.0),
+        gain=b / (1.0 - a), gain_per_s=None, time_constants_s=(), load=load,
     )  # fmt: skip
 
 

@@ -11,8 +11,15 @@ from auditor.rules import RULES, get_rule
 from auditor.rules.base import Rule
 
 
-def drive(rule: Rule, values: dict[str, float], x: list[float], *, period: float = 1.0, y_hat: list[float] | None = None,
-          e: list[float] | None = None) -> list[int]:  # fmt: skip
+def drive(
+    rule: Rule,
+    values: dict[str, float],
+    x: list[float],
+    *,
+    period: float = 1.0,
+    y_hat: list[float] | None = None,
+    e: list[float] | None = None,
+) -> list[int]:
     """Feed a rule's compiled function sample by sample; return where it asks to update."""
     values = rule.complete(values)
     packed = np.ascontiguousarray(np.array(rule.pack(values, period), dtype=float)[:, None])
