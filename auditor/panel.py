@@ -52,7 +52,7 @@ def scale_of(record: Record, controller: Pid, tau_cl_s: float) -> Scale:
 def make_settings(
     loop: Loop, record: Record, controller: Pid, tau_cl_s: float, *, quick: bool = False
 ) -> list[Setting]:
-    """Return the settings to replay: those of the loop file, or the standard panel.
+    """Return the settings to replay: those of the loop file beside the slowed-down clock, or the standard panel.
 
     Raises
     ------
@@ -60,7 +60,10 @@ def make_settings(
         A rule or a setting of the loop file is unknown or out of range; all of them are told at once.
     """
     if loop.rules:
-        return requested(loop, record.period)
+        asked = requested(loop, record.period)
+        # The slowed-down clock is what every rule is held against, so it is always replayed.
+        clock = [] if any(s.rule == "periodic" for s in asked) else _clocks(loop, record, quick=quick)
+        return [*asked, *clock]
     return standard(loop, record, scale_of(record, controller, tau_cl_s), QUICK_STEPS if quick else STEPS)
 
 
@@ -138,6 +141,12 @@ def standard(loop: Loop, record: Record, scale: Scale, steps: int) -> list[Setti
     order = {name: i for i, name in enumerate(dict.fromkeys(name for name, _ in asked))}
     asked.sort(key=lambda item: order[item[0]])
     return [make_setting(name, values, loop, record.period) for name, values in asked]
+
+
+def _clocks(loop: Loop, record: Record, *, quick: bool) -> list[Setting]:
+    """The slowed-down clock at a few divisors."""
+    every = clock_divisors(record, loop)
+    return [make_setting("periodic", {"every": n}, loop, record.period) for n in (every[::2] if quick else every)]
 
 
 def thresholds(scale: Scale, band: float | None, steps: int) -> list[float]:

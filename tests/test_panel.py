@@ -53,6 +53,15 @@ def test_a_rule_inherits_the_owners_longest_silence_and_the_clock_does_not() -> 
     assert [s.max_silence_s for s in requested(loop(rules=rules, limits=limits), 60.0)] == [1800.0, 600.0, None]
 
 
+def test_the_slowed_down_clock_is_always_replayed() -> None:
+    rules = (RuleRequest(rule="send-on-delta", settings={"delta": (0.01,)}),)
+    settings = make_settings(loop(rules=rules), record(), Pid(gain=100.0), 600.0)
+    assert [s.rule for s in settings[:2]] == ["send-on-delta", "periodic"]
+    stated = (*rules, RuleRequest(rule="periodic", settings={"every": (4.0,)}))
+    settings = make_settings(loop(rules=stated), record(), Pid(gain=100.0), 600.0)
+    assert [s.rule for s in settings] == ["send-on-delta", "periodic"]
+
+
 def test_wrong_rules_are_told_together() -> None:
     rules = (
         RuleRequest(rule="send-on-dleta", settings={"delta": (0.01,)}),

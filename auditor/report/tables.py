@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
@@ -112,7 +113,11 @@ def _against(option: Option) -> str:
 
 def _difference(option: Option) -> str:
     ends = option.replay.rms_difference90 if option.replay else None
-    return "–" if ends is None else f"{number(ends[0])} … {number(ends[1])}".replace("-", "\u2212")
+    if ends is None:
+        return "–"
+    # Where the clock ran away under some likely plants there is no lower end.
+    told = f"{number(ends[0])} … {number(ends[1])}" if math.isfinite(ends[0]) else f"below {number(ends[1])}"
+    return told.replace("-", "\u2212")
 
 
 def _rows(content: Content, lines: Sequence[tuple[str, _Cell]]) -> tuple[Row, ...]:
