@@ -13,7 +13,6 @@ import numpy as np
 INTEGRALS = ("forward", "backward", "trapezoid")
 GAP_INTEGRALS = ("held", "current", "saturating")
 ANTI_WINDUPS = ("back-calculation", "freeze", "none")
-DERIVATIVES = ("measurement", "error")
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -29,7 +28,7 @@ class Pid:
     derivative_time, derivative_filter : float
         Td [s] and N; the derivative's filter is Tf = Td / N.
     derivative_on : str
-        One of `DERIVATIVES`.
+        "measurement" or "error".
     setpoint_weight : float
         β.
     error_deadband : float

@@ -19,7 +19,6 @@ from auditor.identify.plant import Load, Plant
 from auditor.kernels import points
 from auditor.kernels.zero_order_hold import chain, oscillator, zero_of
 
-PLANT_TYPES = ("self-regulating", "integrating", "unstable")
 ENTRY_NAMES = (
     "input",
     "output",
@@ -143,12 +142,6 @@ def to_plant(
         load=_load(x, entry),
         parameters=(*(float(v) for v in x), float(m), float(entry)),
     )
-
-
-def to_point(plant: Plant) -> tuple[FloatArray, IntArray]:
-    """Return coordinates, shape (8,), and kind, shape (2,), of a plant that came from `to_plant`."""
-    values = np.array(plant.parameters)
-    return values[: points.COORDINATES], values[points.COORDINATES :].astype(np.int64)
 
 
 def _sampled(M: FloatArray, delay: float) -> tuple[FloatArray, FloatArray, FloatArray, int]:

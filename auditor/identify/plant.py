@@ -65,7 +65,7 @@ class Plant:
         Log posterior of the draw, for ranking draws of one log only.
     load : Load
     parameters : tuple of float
-        The estimator's own parameter vector, kept so that a saved model can be continued.
+        The point it came from: eight coordinates (`auditor.kernels.points`), structure, load entry.
     """
 
     A: FloatArray

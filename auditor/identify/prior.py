@@ -10,9 +10,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from auditor.arrays import FloatArray
 from auditor.controllers.pid import Pid
-from auditor.kernels import prior as compiled_prior
 from auditor.kernels.prior import Tuning
 
 _USUAL_PEAK = 1.5
@@ -47,8 +45,3 @@ def tuning(controller: Pid, period: float, plant: str | None) -> Tuning:
         zero_spread=8.0,
         log_integral_time=float(np.log(controller.integral_time / period)) if has_lag_term else 0.0,
     )
-
-
-def log_prior(x: FloatArray, structure: int, entry: int, peak: float, weights: Tuning) -> float:
-    """Return the log prior of a point (`auditor.identify.family`) whose loop has peak sensitivity `peak`."""
-    return float(compiled_prior.log_prior(np.ascontiguousarray(x), structure, entry, peak, weights))

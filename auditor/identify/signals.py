@@ -23,8 +23,6 @@ class Signals:
     good, free, moving : ndarray of bool, shape (N,)
     age, length : ndarray of int, shape (N,)
         Samples since the span began, −1 outside, and samples of the span.
-    stretch : ndarray of int, shape (N,)
-        Number of the unbroken stretch away from limits.
     """
 
     e: FloatArray

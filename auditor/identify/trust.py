@@ -40,9 +40,7 @@ class Evidence:
     controller: Pid
     plants: Sequence[Plant]
     best: int
-    declared: str | None
     null_replay: float
-    injected: bool
     explained_by_error: float
     causes: tuple[str, ...]
     peak_sensitivity: float

@@ -50,11 +50,13 @@ def observe(
         for lane in range(dx.shape[1]):
             now[R.MEASUREMENT, lane] = quantum * np.rint(now[R.MEASUREMENT, lane] / quantum)
     for lane in range(quiet):
-        now[R.MEASUREMENT, lane] = y + now[R.MEASUREMENT, lane]
+        value = y + now[R.MEASUREMENT, lane]
+        now[R.MEASUREMENT, lane] = value
+        now[R.ERROR, lane] = r - value
     for lane in range(quiet, dx.shape[1]):
-        now[R.MEASUREMENT, lane] = y + noise[column[lane]] + now[R.MEASUREMENT, lane]
-    for lane in range(dx.shape[1]):
-        now[R.ERROR, lane] = r - now[R.MEASUREMENT, lane]
+        value = y + noise[column[lane]] + now[R.MEASUREMENT, lane]
+        now[R.MEASUREMENT, lane] = value
+        now[R.ERROR, lane] = r - value
     if now[R.SETPOINT, 0] != r:
         now[R.SETPOINT, :] = r
 
@@ -141,12 +143,16 @@ def decide(
     Lists the lanes that update in `which` and returns how many they are.
     """
     updates = 0
+    forced = 1 if first else 0
     for lane in range(len(since)):
-        asked = (fired[lane] | latched[lane]) != 0
-        due = first or (since[lane] >= gap[lane] and (asked or since[lane] >= silence[lane]))
-        latched[lane] = 1 if (asked and not due) else 0
+        # Bits instead of `and`/`or`: no jumps.
+        asked = (1 if fired[lane] != 0 else 0) | (1 if latched[lane] != 0 else 0)
+        overdue = 1 if since[lane] >= silence[lane] else 0
+        allowed = 1 if since[lane] >= gap[lane] else 0
+        due = forced | (allowed & (asked | overdue))
+        latched[lane] = asked & (1 - due)
         which[updates] = lane
-        updates += 1 if due else 0
+        updates += due
     return updates
 
 
@@ -231,7 +237,6 @@ def note(
     u: float,
     now: FloatArray,
     control: FloatArray,
-    since_run: IntArray,
     past: FloatArray,
     out_y: FloatArray,
     out_u: FloatArray,
@@ -242,19 +247,16 @@ def note(
         past[lane] = away
         out_u[lane] = u + away
         out_y[lane] = now[R.MEASUREMENT, lane]
-        since_run[lane] += 1
 
 
 @compiled
-def recall(past: FloatArray, places: IntArray, acting: FloatArray) -> None:
-    """Fetch δ[k−d] and δ[k−d−1] of every lane; `places` are their slots and move on by one."""
-    ring = past.shape[0]
+def recall(past: FloatArray, t: int, delay: IntArray, acting: FloatArray) -> None:
+    """Fetch δ[k−d] and δ[k−d−1] of every lane; `past` has a power of two of slots, so that a mask wraps around."""
+    mask = past.shape[0] - 1
     for lane in range(past.shape[1]):
-        late = places[lane]
-        later = late - 1 if late > 0 else ring - 1
-        acting[0, lane] = past[late, lane]
-        acting[1, lane] = past[later, lane]
-        places[lane] = late + 1 if late + 1 < ring else 0
+        late = t - delay[lane]
+        acting[0, lane] = past[np.uint64(late & mask), lane]
+        acting[1, lane] = past[np.uint64((late - 1) & mask), lane]
 
 
 @compiled
@@ -276,9 +278,11 @@ def advance(
     """dx⁺ = A dx + B0 δ[k−d] + B1 δ[k−d−1] (2.1); δ is zero before the span."""
     n, lanes = dx.shape
     for i in range(n):
+        first = used[i, 0] == 1
         for lane in range(lanes):
-            following[i, lane] = B0[i, lane] * acting[0, lane] + B1[i, lane] * acting[1, lane]
-        for j in range(n):
+            driven = B0[i, lane] * acting[0, lane] + B1[i, lane] * acting[1, lane]
+            following[i, lane] = driven + A[i, 0, lane] * dx[0, lane] if first else driven
+        for j in range(1, n):
             if used[i, j] == 1:
                 for lane in range(lanes):
                     following[i, lane] += A[i, j, lane] * dx[j, lane]
@@ -329,9 +333,10 @@ def replay_span(
     quiet = leading_zeros(column)
     between = shape[R.BETWEEN_RUN] == 1 or shape[R.FOLLOW_SETPOINT] == 1
     dn = len(dC)
-    ring = max(delay.max(), d_delay) + 2
+    ring = 2
+    while ring < max(delay.max(), d_delay) + 2:
+        ring *= 2
     past = np.zeros((ring, lanes))
-    places = (ring - delay) % ring
     acting = np.zeros((2, lanes))
     dx = np.zeros((n, lanes))
     following = np.zeros((n, lanes))
@@ -344,7 +349,9 @@ def replay_span(
     memory = np.zeros((memory_rows, lanes))
     control = np.zeros((R.CONTROL_ROWS, lanes))
     since = np.zeros(lanes, dtype=np.int64)
-    since_run = np.zeros(lanes, dtype=np.int64)
+    # A controller that runs on messages alone has run when the last one came.
+    apart = between or shape[R.LINK_ACTUATOR] == 1
+    since_run = np.zeros(lanes, dtype=np.int64) if apart else since
     latched = np.zeros(lanes, dtype=np.uint8)
     fired = np.zeros(lanes, dtype=np.uint8)
     which = np.zeros(lanes + 1, dtype=np.int64)
@@ -375,8 +382,10 @@ def replay_span(
         remember(now, sent, since, which, updates, out_updated[k])
         if not first:
             move(control, u[k], law)
-        note(u[k], now, control, since_run, past[t % ring], out_y[k], out_u[k])
-        recall(past, places, acting)
+        note(u[k], now, control, past[t % ring], out_y[k], out_u[k])
+        if apart:
+            since_run += 1
+        recall(past, t, delay, acting)
         advance(used, A, B0, B1, acting, dx, following)
         if predicting:
             positions[t % ring, :] = out_u[k, :]

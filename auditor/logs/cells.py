@@ -150,12 +150,17 @@ def read_mode(column: pa.ChunkedArray) -> TextArray:
     -------
     ndarray of object, shape (n,)
     """
-    if pa.types.is_floating(column.type) and _whole(column):
-        column = pc.cast(column, pa.int64())
-    words = pc.utf8_trim_whitespace(pc.fill_null(pc.cast(column, pa.string()), ""))
+    words = plain_words(column)
     coded = pc.dictionary_encode(words).unify_dictionaries()
     pieces = [np.array(chunk.dictionary.to_pylist(), dtype=object)[chunk.indices.to_numpy()] for chunk in coded.chunks]
     return np.concatenate(pieces)
+
+
+def plain_words(column: pa.ChunkedArray) -> pa.ChunkedArray:
+    """Return a column as text without outer blanks, "" where a cell is empty, whole numbers without a point."""
+    if pa.types.is_floating(column.type) and _whole(column):
+        column = pc.cast(column, pa.int64())
+    return pc.utf8_trim_whitespace(pc.fill_null(pc.cast(column, pa.string()), ""))
 
 
 def _whole(column: pa.ChunkedArray) -> bool:

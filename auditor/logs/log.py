@@ -9,7 +9,7 @@ from typing import Any
 
 import numpy.typing as npt
 
-from auditor.arrays import FloatArray, IntArray
+from auditor.arrays import BoolArray, FloatArray, IntArray
 from auditor.logs.findings.base import Finding
 from auditor.logs.record import InputFile
 
@@ -27,7 +27,11 @@ class Log:
     texts : mapping of str to ndarray of object, shape (rows,)
         For the mode column, and for number columns that hold text states: the cell as text, None where it is a
         plain number or empty. Mode cells are always there, as text.
+    own : mapping of str to ndarray of bool, shape (rows,)
+        For columns that have rows of their own (a tag of a long log): True where the row is one of them. A column
+        that is not named here has all rows.
     rows : int
+        Rows read from the files.
     inputs : tuple of InputFile
     zone : str
         IANA name of the log's own clock, "UTC" when stamps carry an offset or are epochs.
@@ -38,6 +42,7 @@ class Log:
     time: IntArray
     channels: Mapping[str, FloatArray]
     texts: Mapping[str, npt.NDArray[Any]] = field(default_factory=lambda: MappingProxyType({}))
+    own: Mapping[str, BoolArray] = field(default_factory=lambda: MappingProxyType({}))
     rows: int = 0
     inputs: tuple[InputFile, ...] = ()
     zone: str = "UTC"

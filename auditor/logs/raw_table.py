@@ -6,8 +6,10 @@ from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TypeVar
 
+import numpy as np
 import pyarrow as pa
 
+from auditor.arrays import BoolArray
 from auditor.errors import LogError, Problem, raise_all
 from auditor.logs.findings.base import Finding
 from auditor.loop import Loop
@@ -24,11 +26,18 @@ class Wanted:
     time: str
     numbers: Mapping[str, str]
     mode: str | None = None
+    tag: str | None = None
+    quality: str | None = None
 
     def names(self) -> dict[str, str]:
         """Map every column to the loop file key that names it, the time column first."""
-        mode = {self.mode: "signals.mode"} if self.mode is not None else {}
-        return {self.time: "log.time"} | dict(self.numbers) | mode
+        others = {self.mode: "signals.mode", self.tag: "log.tag", self.quality: "log.quality"}
+        return {self.time: "log.time"} | dict(self.numbers) | {n: key for n, key in others.items() if n is not None}
+
+    def columns(self, names: Sequence[str]) -> list[str]:
+        """List the columns to read from a file whose own are `names`, each once."""
+        others = [name for name in (self.mode, self.tag, self.quality) if name is not None]
+        return list(dict.fromkeys([*time_columns(self.time, names), *self.numbers, *others]))
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -43,7 +52,7 @@ class RawTable:
         The time column, or a date and a time-of-day column.
     numbers : mapping of str to pyarrow.ChunkedArray
         Number columns by name: text in a text log, any type in Parquet.
-    mode : pyarrow.ChunkedArray or None
+    mode, tag, quality : pyarrow.ChunkedArray or None
     decimal : str
         Decimal sign of numbers that are text.
     header : str
@@ -59,12 +68,31 @@ class RawTable:
     numbers: Mapping[str, pa.ChunkedArray]
     mode: pa.ChunkedArray | None
     locate: Callable[[int], str]
+    tag: pa.ChunkedArray | None = None
+    quality: pa.ChunkedArray | None = None
     decimal: str = "."
     header: str = ""
     findings: tuple[Finding, ...] = ()
 
     def __len__(self) -> int:
         return len(self.times[0])
+
+    def keep(self, rows: BoolArray) -> RawTable:
+        """Return the table with the marked rows only; a row still knows where it stands in the file."""
+        kept, mask, locate = np.flatnonzero(rows), pa.array(rows), self.locate
+        return replace(
+            self,
+            times=tuple(column.filter(mask) for column in self.times),
+            numbers={name: column.filter(mask) for name, column in self.numbers.items()},
+            mode=_filtered(self.mode, mask),
+            tag=_filtered(self.tag, mask),
+            quality=_filtered(self.quality, mask),
+            locate=lambda row: locate(int(kept[row])),
+        )
+
+
+def _filtered(column: pa.ChunkedArray | None, mask: pa.BooleanArray) -> pa.ChunkedArray | None:
+    return column if column is None else column.filter(mask)
 
 
 def wanted_columns(loop: Loop) -> Wanted:
@@ -77,7 +105,8 @@ def wanted_columns(loop: Loop) -> Wanted:
     for key, signal in roles:
         if signal.column is not None:
             numbers.setdefault(signal.column, key)
-    return Wanted(time=loop.log.time, numbers=numbers, mode=signals.mode.column if signals.mode else None)
+    mode = signals.mode.column if signals.mode else None
+    return Wanted(time=loop.log.time, numbers=numbers, mode=mode, quality=loop.log.quality)
 
 
 def time_columns(time: str, names: Sequence[str]) -> tuple[str, ...]:

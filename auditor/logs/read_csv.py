@@ -82,8 +82,7 @@ def _shape_problems(dress: Dress, wanted: Wanted, label: str) -> list[Problem]:
 
 
 def _places(dress: Dress, wanted: Wanted) -> list[int]:
-    names = [*time_columns(wanted.time, dress.names), *wanted.numbers]
-    return [dress.names.index(name) for name in [*names, *([wanted.mode] if wanted.mode is not None else [])]]
+    return [dress.names.index(name) for name in wanted.columns(dress.names)]
 
 
 def _parse(path: Path, dress: Dress, wanted: Wanted, odd: _OddRows, stated: bool) -> tuple[pa.Table, Dress]:
@@ -99,7 +98,7 @@ def _parse(path: Path, dress: Dress, wanted: Wanted, odd: _OddRows, stated: bool
 
 
 def _parse_as(path: Path, dress: Dress, wanted: Wanted, odd: _OddRows) -> pa.Table:
-    columns = [str(place) for place in dict.fromkeys(_places(dress, wanted))]
+    columns = [str(place) for place in _places(dress, wanted)]
     read = pa.csv.ReadOptions(
         skip_rows=dress.lines_before,
         column_names=[str(place) for place in range(dress.cells)],
@@ -197,12 +196,17 @@ def _raw_table(
     def column(name: str) -> pa.ChunkedArray:
         return table.column(str(dress.names.index(name)))
 
+    def maybe(name: str | None) -> pa.ChunkedArray | None:
+        return None if name is None else column(name)
+
     times = time_columns(wanted.time, dress.names)
     return RawTable(
         label=label,
         times=tuple(column(name) for name in times),
         numbers={name: column(name) for name in wanted.numbers},
-        mode=column(wanted.mode) if wanted.mode is not None else None,
+        mode=maybe(wanted.mode),
+        tag=maybe(wanted.tag),
+        quality=maybe(wanted.quality),
         locate=lambda row: f"line {_line_of_row(path, dress, row)}",
         decimal=dress.decimal,
         header=" ".join(times),

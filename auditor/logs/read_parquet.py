@@ -33,7 +33,7 @@ def read_parquet(path: Path, label: str, wanted: Wanted) -> RawTable:
         with pa.parquet.ParquetFile(path) as file:
             names = list(file.schema_arrow.names)
             raise_all(LogError, column_problems(wanted, names, label))
-            table = file.read(columns=_columns(wanted, names))
+            table = file.read(columns=wanted.columns(names))
             _check_letters(table)
     except (pa.ArrowException, OSError) as error:
         found = str(error).splitlines()[0]
@@ -55,11 +55,6 @@ def _check_letters(table: pa.Table) -> None:
             column.validate(full=True)
 
 
-def _columns(wanted: Wanted, names: list[str]) -> list[str]:
-    mode = [wanted.mode] if wanted.mode is not None else []
-    return list(dict.fromkeys([*time_columns(wanted.time, names), *wanted.numbers, *mode]))
-
-
 def _single_values(table: pa.Table, label: str) -> pa.Table:
     """Undo dictionaries, and refuse columns whose cells are no single values."""
     problems = []
@@ -75,10 +70,15 @@ def _single_values(table: pa.Table, label: str) -> pa.Table:
 
 
 def _raw_table(table: pa.Table, wanted: Wanted, label: str) -> RawTable:
+    def column(name: str | None) -> pa.ChunkedArray | None:
+        return None if name is None else table.column(name)
+
     return RawTable(
         label=label,
         times=tuple(table.column(name) for name in time_columns(wanted.time, table.column_names)),
         numbers={name: table.column(name) for name in wanted.numbers},
-        mode=table.column(wanted.mode) if wanted.mode is not None else None,
+        mode=column(wanted.mode),
+        tag=column(wanted.tag),
+        quality=column(wanted.quality),
         locate=lambda row: f"row {row + 1}",
     )

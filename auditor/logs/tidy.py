@@ -81,15 +81,7 @@ def _dropped(kind: str, rows: IntArray, table: RawTable, what: str) -> Finding |
 def _without(table: RawTable, stamps: Stamps, rows: IntArray, findings: Sequence[Finding]) -> tuple[RawTable, Stamps]:
     keep = np.ones(len(table), dtype=np.bool_)
     keep[rows] = False
-    kept, mask = np.flatnonzero(keep), pa.array(keep)
-    short = replace(
-        table,
-        times=tuple(column.filter(mask) for column in table.times),
-        numbers={name: column.filter(mask) for name, column in table.numbers.items()},
-        mode=table.mode.filter(mask) if table.mode is not None else None,
-        locate=lambda row: table.locate(int(kept[row])),
-        findings=(*table.findings, *findings),
-    )
+    short = replace(table.keep(keep), findings=(*table.findings, *findings))
     return short, Stamps(
         nanoseconds=stamps.nanoseconds[keep],
         local=stamps.local[keep],

@@ -28,7 +28,10 @@ _FEWEST_LEVELS = {"setpoint": 10}
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
 class Column:
-    """One value per stamp, shapes (M,); `broken` marks stamps at which a held value ends."""
+    """One value per stamp, shapes (M,).
+
+    `broken` marks stamps at which a held value ends, `own` those at which the column has a row (None: all of them).
+    """
 
     signal: Signal
     role: str
@@ -36,6 +39,7 @@ class Column:
     spoiled: Mapping[str, BoolArray]
     removed: Mapping[str, FloatArray]
     broken: BoolArray
+    own: BoolArray | None = None
 
 
 def read_column(log: Log, order: Order, signal: Signal, role: str) -> Column:
@@ -51,14 +55,14 @@ def read_column(log: Log, order: Order, signal: Signal, role: str) -> Column:
     values, conflict = order.merge(np.where(outside, np.nan, values) if outside.any() else values)
     if order.overlapped.any():
         values = np.where(order.overlapped, np.nan, values)
-    absent = np.isnan(values)
+    absent, own = np.isnan(values), _own_rows(log, order, signal)
     spoiled = {
         "conflict": conflict & ~order.overlapped,
         "sentinel": order.any_of(sentinel) & absent,
         "outside": order.any_of(outside) & absent,
         "overlap": order.overlapped,
     }
-    spoiled["empty"] = absent & ~np.logical_or.reduce(list(spoiled.values()))
+    spoiled["empty"] = absent & ~np.logical_or.reduce(list(spoiled.values())) & (True if own is None else own)
     broken = np.logical_or.reduce([spoiled[k] for k in ("conflict", "sentinel", "outside", "overlap")])
     return Column(
         signal=signal,
@@ -67,7 +71,14 @@ def read_column(log: Log, order: Order, signal: Signal, role: str) -> Column:
         spoiled=spoiled,
         removed=removed,
         broken=broken | _text_states(log, order, signal),
+        own=own,
     )
+
+
+def _own_rows(log: Log, order: Order, signal: Signal) -> BoolArray | None:
+    """Return True at stamps at which a signal with rows of its own has one; None when all rows are."""
+    own = log.own.get(str(signal.column))
+    return None if own is None else order.any_of(order.arrange(own))
 
 
 def _outside(values: FloatArray, signal: Signal, role: str) -> BoolArray:
@@ -134,7 +145,7 @@ def sample(column: Column, grid: Grid) -> Trace:
 def _state(column: Column, grid: Grid) -> npt.NDArray[np.int8]:
     """Return the best each instant has; a slower log's row speaks for the instants up to the next one."""
     state = np.full(grid.count, ABSENT, dtype=np.int8)
-    state[grid.instant] = EMPTY
+    state[grid.instant if column.own is None else grid.instant[column.own]] = EMPTY
     for kind, code in (("overlap", CONFLICT), ("conflict", CONFLICT), ("sentinel", SENTINEL), ("outside", OUTSIDE)):
         mask = column.spoiled[kind]
         if mask.any():

@@ -7,7 +7,7 @@ import pytest
 from scipy import linalg, signal
 
 from auditor.errors import CannotAnswerError
-from auditor.identify.family import INTEGRATOR_POLE, LONGEST_DELAY, family, to_plant, to_point
+from auditor.identify.family import INTEGRATOR_POLE, LONGEST_DELAY, family, to_plant
 from auditor.kernels import points
 from auditor.kernels.zero_order_hold import difference_equation, exponential, oscillator
 from tests.identify.spectral_cases import random_point
@@ -107,9 +107,7 @@ def test_plants_numbers_are_in_the_logs_units() -> None:
     assert plant.log_posterior == 7.5
     static = plant.C @ np.linalg.solve(np.eye(4) - plant.A, plant.B0 + plant.B1)
     assert static == pytest.approx(plant.gain, rel=1e-9)
-    back, kind = to_point(plant)
-    np.testing.assert_array_equal(back, x)
-    assert kind.tolist() == [3, 4]
+    assert plant.parameters == (*x, 3.0, 4.0)
 
 
 def test_oscillator_keeps_its_static_gain_and_damping() -> None:

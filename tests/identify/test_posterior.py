@@ -16,8 +16,9 @@ from auditor.identify import spectrum as sp
 from auditor.identify.family import family, to_plant
 from auditor.identify.loop_math import controller_spectrum, plant_spectrum
 from auditor.identify.posterior import chains_at, target, unspoilt
-from auditor.identify.prior import log_prior, tuning
+from auditor.identify.prior import tuning
 from auditor.kernels import points
+from auditor.kernels.prior import log_prior
 from auditor.kernels.spectral import IMPOSSIBLE, WORK_ROWS, log_likelihood
 from tests.identify.spectral_cases import CONTROLLER, DELAY, GAIN, LAG, PERIOD, loop_record, random_point
 

@@ -17,6 +17,7 @@ _OFF_LATTICE = 0.05
 _ON_LATTICE = 0.99
 _HALVINGS = 24
 _USUAL = 0.9
+_COARSE = 0.2
 
 
 def quantum(values: FloatArray, fewest: int = 4) -> float | None:
@@ -106,7 +107,8 @@ def _on_lattice(values: FloatArray, step: float, origin: float) -> bool:
 
 _EFFECT = {
     "measurement": "the replayed measurement is rounded the same way; thresholds below three steps are not answered",
-    "actuator": "none on the values; the controller is recovered from levels, where rounding does not add up",
+    "actuator": "none on the values; the controller is recovered from levels, where rounding does not add up; moves "
+    "below a step are not in the log, so that the record returns to {half:.3g} {unit} (half a step) at best",
     "setpoint": "none on the values; a setpoint change is one of at least a step",
     "disturbance": "none",
 }
@@ -121,12 +123,19 @@ def find(seen: Evidence) -> list[Finding]:
             end=None,
             count=len(np.unique(trace.values[np.isfinite(trace.values)])),
             detail=_detail(trace, trace.quantum),
-            effect=_EFFECT[trace.role],
+            effect=_EFFECT[trace.role].format(half=trace.quantum / 2, unit=trace.unit).replace("  ", " "),
+            weight=_weight(trace, trace.quantum),
             signal=trace.name,
         )
         for trace in seen.recorded_traces
         if trace.quantum is not None
     ]
+
+
+def _weight(trace: Trace, step: float) -> str:
+    """Tell whether an actuator is so coarse that the rounding is a good part of its moves."""
+    coarse = trace.role == "actuator" and step > _COARSE * float(np.nanstd(trace.values))
+    return "limits the answer" if coarse else "note"
 
 
 def _detail(trace: Trace, step: float) -> str:

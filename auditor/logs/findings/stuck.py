@@ -4,16 +4,16 @@ from __future__ import annotations
 
 import numpy as np
 
-from auditor.arrays import BoolArray, FloatArray, IntArray
+from auditor.arrays import FloatArray, IntArray
 from auditor.logs.findings.base import Finding
-from auditor.logs.findings.evidence import Evidence, Trace
+from auditor.logs.findings.evidence import Evidence
+from auditor.logs.findings.series import as_stored, at_rest, runs_of_one_value
 from auditor.logs.findings.wording import moment, plural
 from auditor.text import duration, percent
 
 _LONGEST_USUAL = 0.99
 _TIMES_USUAL = 10
 _FEWEST = 20
-_RESTS = 3
 _MUCH = 0.01
 
 
@@ -32,9 +32,8 @@ def stuck_runs(values: FloatArray) -> tuple[IntArray, IntArray]:
     moved = values[1:] != values[:-1]
     if len(moved) - np.sum(moved) < _FEWEST:
         return none, none
-    starts = np.concatenate(([0], np.flatnonzero(moved) + 1))
-    lengths = np.diff(np.append(starts, len(values)))
-    free = ~_at_rest(values[starts], lengths)
+    starts, lengths = runs_of_one_value(values)
+    free = ~at_rest(values[starts], lengths, _FEWEST)
     starts, lengths = starts[free], lengths[free]
     others = np.sort(lengths)[:-1]
     usual = float(np.quantile(others, _LONGEST_USUAL)) if len(others) else 1.0
@@ -42,25 +41,12 @@ def stuck_runs(values: FloatArray) -> tuple[IntArray, IntArray]:
     return starts[long], starts[long] + lengths[long] - 1
 
 
-def _at_rest(levels: FloatArray, lengths: IntArray) -> BoolArray:
-    """Return True for the runs at an end of the signal's range where it rests again and again: nothing is stuck there.
-
-    A flow that is nought every night, or a transmitter at the end of its range, is what it looks like.
-    """
-    rest = np.zeros(len(levels), dtype=np.bool_)
-    for end in (levels.min(), levels.max()):
-        there = levels == end
-        if np.sum(there & (lengths > _FEWEST)) >= _RESTS:
-            rest |= there
-    return rest
-
-
 def find(seen: Evidence) -> list[Finding]:
     """Report the stretches over which the measurement stands still."""
     trace = seen.trace("measurement")
     if trace.constant:
         return []
-    values, stamps = _as_stored(trace, seen)
+    values, stamps = as_stored(trace, seen)
     first, last = stuck_runs(values)
     if len(first) == 0:
         return []
@@ -81,12 +67,3 @@ def find(seen: Evidence) -> list[Finding]:
             weight="stops the answer" if share > 1 - _MUCH else "limits the answer" if share > _MUCH else "note",
         )
     ]
-
-
-def _as_stored(trace: Trace, seen: Evidence) -> tuple[FloatArray, IntArray]:
-    """Return the finite values with their times: row by row, or sample by sample where values are held."""
-    if trace.held:
-        there = np.flatnonzero(np.isfinite(trace.sampled))
-        return trace.sampled[there], seen.start + np.rint(there * (seen.period * 1e9)).astype(np.int64)
-    there = np.flatnonzero(np.isfinite(trace.values))
-    return trace.values[there], seen.stamps[there]
