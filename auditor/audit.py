@@ -18,6 +18,7 @@ from auditor.job import Replayed, all_warm_up, bench_of, replay_all
 from auditor.logs.align import read_record
 from auditor.logs.record import Record, Span
 from auditor.loop import Loop
+from auditor.objections import Case
 from auditor.panel import make_settings, requested
 from auditor.progress import Progress, silent
 from auditor.replay.bench import Bench
@@ -25,7 +26,7 @@ from auditor.replay.counted import split
 from auditor.replay.measuring import baseline
 from auditor.replay.types import Measures, Replay
 from auditor.sweep import Parts, make_parts, with_series
-from auditor.verdict import CAUTIONS, Case, Recommendation, Verdict, decide, recommend
+from auditor.verdict import CAUTIONS, Recommendation, Verdict, decide, recommend
 from auditor.version import VERSION
 
 PACKAGES = ("numpy", "scipy", "pandas", "pyarrow", "numba", "matplotlib", "pydantic", "jinja2", "typer")
@@ -96,7 +97,7 @@ def audit(
     record, model : optional
         Already read or identified; found from the loop when left out.
     seed : int
-        Same input and same seed give the same result, bit for bit.
+        Same input and same seed give the same result, bit for bit. A given model brings its own.
     quick : bool
         Half the draws and a coarser panel.
     jobs : int
@@ -113,7 +114,7 @@ def audit(
     if record is None:
         progress("reading the log", 0.0)
         record = read_record(loop)
-    provenance = _provenance(seed, command)
+    provenance = _provenance(seed if model is None else model.seed, command)
     try:
         model = model or identify(record, loop, seed=seed, quick=quick, workers=jobs, progress=progress)
     except CannotAnswerError as error:

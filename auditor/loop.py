@@ -52,7 +52,8 @@ class Signal:
     """One signal of the loop: a column of the log, or a constant `value`.
 
     The engineering value is ``scale * raw + offset``; `low`…`high` is the plausible range of a measurement
-    (None: not stated); `resolution` the step the signal is stored with (None: found by looking).
+    (None: not stated); `resolution` the step the signal is stored with (None: found by looking); `time` its own time
+    column (None: the log's).
     """
 
     column: str | None = None
@@ -64,6 +65,7 @@ class Signal:
     high: float | None = None
     resolution: float | None = None
     stored: str | None = None
+    time: str | None = None
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -79,6 +81,7 @@ class Mode:
 
     column: str
     automatic: tuple[Any, ...]
+    time: str | None = None
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -142,7 +145,10 @@ class Accept:
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
 class Channel:
-    """What the link can carry: at most `max_messages` in any `window`, of which `other_traffic` are not ours."""
+    """What the link can carry: at most `max_messages` in any `window`, of which `other_traffic` are not ours.
+
+    `airtime` [s] is how long one message occupies the link; `duty_cycle` the share of time one sender may do so.
+    """
 
     window: float
     max_messages: float

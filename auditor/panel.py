@@ -95,7 +95,8 @@ def make_setting(
     Raises
     ------
     RuleError
-        The rule or a setting is unknown or out of range, or `max_silence` is shorter than `min_gap`.
+        The rule or a setting is unknown or out of range, has no use on the link, or `max_silence` is shorter than
+        `min_gap`.
     """
     rule = get_rule(name)
     values = rule.complete({k: v for k, v in given.items() if k not in GUARDS})
@@ -105,6 +106,7 @@ def make_setting(
         raise RuleError(
             Problem(what=f"rule '{name}' has no link '{link}'", found=link, expected=" or ".join(rule.links))
         )
+    raise_all(RuleError, _without_use(name, link, request))
     setting = Setting(
         rule=name,
         link=link,
@@ -116,6 +118,23 @@ def make_setting(
     )
     guards(setting, period)
     return setting
+
+
+def _without_use(name: str, link: str, request: RuleRequest | None) -> list[Problem]:
+    """On the actuator's link the rule watches the command and the controller runs at every sample."""
+    if request is None or link != "actuator":
+        return []
+    asked = {"signal": request.signal, "between": request.between}
+    return [
+        Problem(
+            what=f"{key} of rule '{name}' has no use on the actuator's link",
+            found=f'{key} = "{value}"',
+            expected="the command is watched, and the controller runs at every sample",
+            do=f'remove {key}, or write link = "sensor"',
+        )
+        for key, value in asked.items()
+        if value in ("measurement", "run")
+    ]
 
 
 def rule_default(rule: str, setting: str) -> float | None:

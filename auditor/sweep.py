@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
 from typing import Generic, TypeVar
 
@@ -19,8 +18,12 @@ from auditor.replay.lanes import Lanes, diverged, replay_lanes
 from auditor.replay.measuring import answer_interval, log_floor, middle, per_lane, totals
 from auditor.replay.refusals import refusal, trust_of_width
 from auditor.replay.types import Replay, Setting
+from auditor.workers import run_each
 
 _T = TypeVar("_T")
+
+PARTS = ("whole", "first", "rest")
+"""Parts of the counted time with their own measures: all, where a setting is chosen, where it is judged."""
 
 INTERVALS = {"updates": "updates", "rms_error": "error", "iae_per_hour": "error", "max_abs_error": "error"}
 """Measures with an interval, and which floor of the log applies to each."""
@@ -80,19 +83,11 @@ def sweep(
     jobs : int
         Threads; the result does not depend on it.
     """
-    done = 0
 
     def one(index: int) -> Outcome[_T]:
-        nonlocal done
-        outcome = answer(bench, loop, index, settings[index], parts, inspect)
-        done += 1
-        progress("replaying rules", done / len(settings))
-        return outcome
+        return answer(bench, loop, index, settings[index], parts, inspect)
 
-    if jobs <= 1:
-        return [one(i) for i in range(len(settings))]
-    with ThreadPoolExecutor(jobs) as pool:
-        return list(pool.map(one, range(len(settings))))
+    return run_each(one, range(len(settings)), jobs, "replaying rules", progress)
 
 
 def answer(
@@ -109,7 +104,7 @@ def answer(
     whole = measured["whole"]
     unstable = diverged(lanes, bench)
     floor = log_floor(bench.record)
-    intervals = {name: _intervals(setting, measured[name], bench.draws, floor) for name in ("whole", "first", "rest")}
+    intervals = {name: _intervals(setting, measured[name], bench.draws, floor) for name in PARTS}
     refused = refusal(setting, bench, whole, intervals["whole"], unstable[: bench.draws])
     replayed = Replay(
         setting=setting,
@@ -130,14 +125,14 @@ def answer(
     )
     return Outcome(
         replay=replayed,
-        squares={p: measured[p]["rms_error"][: bench.draws] ** 2 for p in ("whole", "first", "rest")},
-        counts={p: measured[p]["updates"][: bench.draws].copy() for p in ("whole", "first", "rest")},
+        squares={p: measured[p]["rms_error"][: bench.draws] ** 2 for p in PARTS},
+        counts={p: measured[p]["updates"][: bench.draws].copy() for p in PARTS},
         inspected=inspect(index, setting, lanes),
     )
 
 
 def _spans(parts: Parts) -> list[tuple[str, tuple[Span, ...]]]:
-    return [("whole", parts.whole), ("first", parts.first), ("rest", parts.rest), *parts.months]
+    return [*((name, getattr(parts, name)) for name in PARTS), *parts.months]
 
 
 def _measure(bench: Bench, limits: Limits, lanes: Lanes, spans: Sequence[Span]) -> dict[str, FloatArray]:
@@ -166,6 +161,3 @@ def with_series(bench: Bench, replay: Replay) -> Replay:
     """Replay a setting once more and keep the signals of its median member."""
     lanes = replay_lanes(bench, replay.setting)
     return replace(replay, series=lanes.series(replay.median_member))
-
-
-__all__ = ["Outcome", "Parts", "answer", "make_parts", "median_member", "sweep", "with_series"]

@@ -13,9 +13,16 @@ def nearest(word: str, known: Iterable[str]) -> str | None:
     return close[0] if close else None
 
 
+FILL_IN = "# FILL IN"
+"""Mark of a line of a drafted loop file that waits for a person."""
+
+TIME_UNITS = ((86400.0, "d"), (3600.0, "h"), (60.0, "min"), (1.0, "s"), (1e-3, "ms"))
+"""Units of time from the largest down, each with its size [s]."""
+
+
 def duration(seconds: float) -> str:
     """Write a duration the way a loop file takes it, in the largest unit that reads well."""
-    for size, unit in ((86400.0, "d"), (3600.0, "h"), (60.0, "min"), (1.0, "s"), (1e-3, "ms")):
+    for size, unit in TIME_UNITS:
         if abs(seconds) >= size:
             return f"{seconds / size:.3g} {unit}"
     return "0 s" if seconds == 0 else f"{seconds:.3g} s"
@@ -29,6 +36,11 @@ def number(value: float | None, digits: int = 3) -> str:
         return f"{value:.{digits - 1}e}"
     decimals = max(0, digits - 1 - (math.floor(math.log10(abs(value))) if value else 0))
     return f"{value:,.{decimals}f}".replace(",", "\u202f")
+
+
+def quantity(value: float, unit: str, digits: int = 2) -> str:
+    """Write a number with its unit."""
+    return f"{number(value, digits)} {unit}".rstrip()
 
 
 def percent(fraction: float | None, digits: int = 0) -> str:

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 
 import numpy as np
@@ -15,12 +14,11 @@ from auditor.replay.bench import Bench
 from auditor.replay.lanes import replay_lanes
 from auditor.replay.measuring import interval, per_lane, totals
 from auditor.replay.types import Setting
-from auditor.sweep import Parts
+from auditor.sweep import PARTS, Parts
+from auditor.workers import run_each
 
 PHASES = 8
 """The clock at every n is averaged over up to this many phases: where it starts is chance."""
-
-PARTS = ("whole", "first", "rest")
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -66,17 +64,11 @@ def clock_curve(
     bench: Bench, loop: Loop, parts: Parts, every: Sequence[int], *, jobs: int = 2, progress: Progress = silent
 ) -> ClockCurve:
     """Replay the slowed-down clock at every divisor and phase over every likely plant."""
-    done = 0
 
     def one(n: int) -> dict[str, tuple[FloatArray, FloatArray]]:
-        nonlocal done
-        result = _mean_over_phases(bench, loop, parts, n)
-        done += 1
-        progress("replaying the slowed-down clock", done / len(every))
-        return result
+        return _mean_over_phases(bench, loop, parts, n)
 
-    with ThreadPoolExecutor(max(1, jobs)) as pool:
-        rows = list(pool.map(one, every))
+    rows = run_each(one, every, jobs, "replaying the slowed-down clock", progress)
     return ClockCurve(
         every=tuple(every),
         counts={p: np.array([row[p][0] for row in rows]) for p in PARTS},

@@ -83,6 +83,9 @@ def test_every_rule_has_a_page_with_its_formula_and_settings(rule: Rule) -> None
     page = text(f"rules/{rule.name}.md")
     assert rule.formula in page
     assert all(f"| `{setting.name}` |" in page for setting in rule.settings)
+    flat = " ".join(page.split())
+    assert f"**Wins.** {rule.wins}" in flat
+    assert f"**Loses.** {rule.loses}" in flat
     assert "**Worked example.**" in page
     assert f"../rules/{rule.name}.md" in text("rooms/rules.md")
 

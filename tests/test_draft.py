@@ -17,6 +17,8 @@ from auditor.draft.ranges import actuator_range, constant_setpoint
 from auditor.draft.roles import find_roles, name_weight
 from auditor.draft.words import is_unit, names, unit_of
 from auditor.errors import LogError, LoopFileError
+from auditor.logs.align import read_record
+from auditor.logs.record import Span
 from auditor.loop import Loop
 from auditor.loopfile import read_loop
 
@@ -257,6 +259,9 @@ def test_long_layout(tmp_path):
     assert (loop.log.layout, loop.log.tag, loop.log.value, loop.log.quality) == ("long", "tag", "value", "quality")
     assert roles(loop) == ("LT1", "LT1.SP", "GV1")
     assert loop.period == 60.0
+    record = read_record(loop)
+    np.testing.assert_array_equal(record.y, np.round(w["y"], 4))
+    assert record.spans == (Span(0, ROWS),)
 
 
 def test_newest_row_first_and_old_line_ends(tmp_path):

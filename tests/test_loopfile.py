@@ -209,6 +209,16 @@ def test_paths_may_be_a_list_and_long_layout_has_tags(tmp_path):
     assert (log.paths, log.layout, log.tag, log.value) == (("a.csv", "b.csv"), "long", "name", "v")
 
 
+def test_a_signal_may_have_a_time_column_of_its_own_in_the_wide_layout(tmp_path):
+    text = SHORT.replace('"gate", unit', '"gate", time = "t2", unit')
+    loop = read(tmp_path, text + '\n[signals.mode]\ncolumn = "m"\nautomatic = [1]\ntime = "t3"\n')
+    assert (loop.signals.measurement.time, loop.signals.actuator.time, loop.signals.mode.time) == (None, "t2", "t3")
+    with pytest.raises(LoopFileError) as raised:
+        read(tmp_path, text.replace('"pool.csv"', '"pool.csv"\nlayout = "long"'))
+    (problem,) = raised.value.problems
+    assert "signals.actuator.time is for the wide layout only" in problem.what
+
+
 def test_a_byte_order_mark_and_windows_line_ends_do_no_harm(tmp_path):
     (tmp_path / "pool.toml").write_bytes(b"\xef\xbb\xbf" + SHORT.replace("\n", "\r\n").encode())
     assert read_loop(tmp_path / "pool.toml").name == "pool"
@@ -320,6 +330,8 @@ delta = "0.5"
         ('"pool.csv"', '"pool.csv"\ntime_unit = "msec"', "line 7: log.time_unit", '"ms"'),
         ('"pool.csv"', '"pool.csv"\ntag = "name"', "line 7: log.tag", 'layout = "long"'),
         ('"pool.csv"', '"pool.csv"\ngood = [192]', "line 7: log.good", "add quality"),
+        ('"gate", unit', '"gate", tim = "t2", unit', "signals.actuator.tim", 'did you mean "time"'),
+        ("{ value = 2.0 }", '{ value = 2.0, time = "t2" }', "signals.setpoint.time", "remove time"),
         ('"pool.csv"', '"pool.csv"\nencoding = "utf-9"', "line 7: log.encoding", ""),
         ("{ value = 2.0 }", '{ value = 2.0, column = "x" }', "signals.setpoint", "constant"),
         ("{ value = 2.0 }", '{ value = 2.0, unit = "cm" }', "signals.setpoint.unit", "scale"),
@@ -354,6 +366,7 @@ def test_one_fault_one_problem(tmp_path, old, new, where, do):
         ("[accept]\nmin_saved_fraction = 30", "accept.min_saved_fraction", "cannot be used"),
         ('[channel]\nwindow = "60s"', "channel.max_messages", "missing"),
         ("[channel]\nwindow = 60\nmax_messages = 5\nduty_cycle = 2", "channel.duty_cycle", "cannot be used"),
+        ("[channel]\nwindow = 60\nmax_messages = 5\nduty_cycle = 0.1", "channel.duty_cycle", "needs the airtime"),
         ('[failsafe]\nafter = "30min"\naction = "close"', "failsafe.action", "not an action"),
         ('[energy]\nper_update = "18 mW"', "energy.per_update", "not an energy"),
         ('[energy]\nidle = "60 uJ"', "energy.idle", "not a power"),

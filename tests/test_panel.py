@@ -95,6 +95,15 @@ def test_the_panel_scales_with_the_units_of_the_log() -> None:
     np.testing.assert_allclose(pick(b), 100 * np.array(pick(a)), rtol=0.011)
 
 
+def test_what_has_no_use_on_the_actuators_link_is_refused() -> None:
+    rule = RuleRequest(
+        rule="send-on-delta", link="actuator", signal="measurement", between="run", settings={"delta": (1.0,)}
+    )
+    with pytest.raises(RuleError) as caught:
+        requested(loop(rules=(rule,)), 60.0)
+    assert [problem.found for problem in caught.value.problems] == ['signal = "measurement"', 'between = "run"']
+
+
 def test_an_unknown_link_is_refused() -> None:
     with pytest.raises(RuleError, match="no link 'radio'"):
         one_setting("send-on-delta", {"delta": 1.0}, loop(), "radio")

@@ -13,8 +13,9 @@ from auditor.dangers.interval import Flag
 from auditor.identify.plant import Load, Model, Plant
 from auditor.logs.record import Span
 from auditor.loop import Accept, Actuator, Limits, LogSource, Loop, Signal, Signals
+from auditor.objections import Case
 from auditor.replay import Measures, Replay, Setting
-from auditor.verdict import CAUTIONS, Case, decide, recommend
+from auditor.verdict import CAUTIONS, decide, recommend
 
 FIRST, REST = (Span(100, 700),), (Span(700, 1100),)
 HOURS = 100.0

@@ -9,7 +9,7 @@ from collections.abc import Sequence
 
 import typer
 
-from auditor.cli import audit, check, demo, draft, identify, replay, rules
+from auditor.cli import audit, check, demo, disguise, draft, identify, replay, rules
 from auditor.errors import AuditorError
 
 FAULT, WRONG_COMMAND, INTERRUPTED = 1, 2, 130
@@ -24,12 +24,12 @@ app = typer.Typer(
     rich_markup_mode=None,
 )
 
-for module in (demo, draft, check, identify, replay, audit, rules):
+for module in (demo, draft, check, identify, replay, audit, rules, disguise):
     module.register(app)
 
 
 def run(arguments: Sequence[str]) -> int:
-    """Run one command and return its exit code (0, 1, 2, 3 or 4).
+    """Run one command and return its exit code (0, 1, 2, 3 or 4; 130 when interrupted).
 
     Errors the user can mend are told in full and without a traceback; a fault of the program asks for a report.
     """

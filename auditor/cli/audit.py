@@ -9,12 +9,10 @@ from typing import TYPE_CHECKING
 
 import typer
 
-from auditor.cli.options import JOBS, Jobs, Json, LoopFile, ModelFile, Out, Quick, Seed
+from auditor.cli.options import CANNOT_ANSWER, JOBS, Jobs, Json, LoopFile, ModelFile, Out, Quick, Seed
 
 if TYPE_CHECKING:
     from auditor.audit import Audit
-
-CANNOT_ANSWER = 4
 
 
 def register(app: typer.Typer) -> None:

@@ -14,10 +14,11 @@ def register(app: typer.Typer) -> None:
 
     @app.command("check", help="Read the log and print what was found in it; nothing is replayed.")
     def command(loopfile: LoopFile, json: Json = False) -> None:
-        from auditor.cli.screen import progress_on_stderr
+        from auditor.cli.screen import paragraph, progress_on_stderr
+        from auditor.cli.strip import time_strip
         from auditor.cli.summary import asked_of_log, findings_table, record_lines
         from auditor.logs.align import read_record
-        from auditor.loopfile import read_loop
+        from auditor.loopfile import controller_in_words, read_loop
         from auditor.report.as_json import log_json
 
         loop = read_loop(loopfile)
@@ -28,4 +29,6 @@ def register(app: typer.Typer) -> None:
         if json:
             sys.stdout.write(log_json(record))
             return
-        print(record_lines(record, loop), findings_table(record), asked_of_log(record, loop), sep="\n\n")
+        told = [record_lines(record, loop), time_strip(record), findings_table(record), asked_of_log(record, loop)]
+        stated = controller_in_words(loopfile)
+        print(*told, *([paragraph(stated)] if stated else []), sep="\n\n")

@@ -8,7 +8,7 @@ from typing import Annotated
 
 import typer
 
-from auditor.cli.options import JOBS, Jobs, Json, LoopFile, Quick, Seed
+from auditor.cli.options import CANNOT_ANSWER, JOBS, Jobs, Json, LoopFile, Quick, Seed
 
 
 def register(app: typer.Typer) -> None:
@@ -35,8 +35,10 @@ def register(app: typer.Typer) -> None:
         from auditor.identify.model_file import model_text
         from auditor.logs.align import read_record
         from auditor.loopfile import read_loop
-        from auditor.report.figures.step_response import picture
+        from auditor.report.figures.step_response import check_suffix, picture
 
+        if plot is not None:
+            check_suffix(plot.suffix)
         loop = read_loop(loopfile)
         with progress_on_stderr(quiet=json) as progress:
             progress("reading the log", 0.0)
@@ -47,4 +49,4 @@ def register(app: typer.Typer) -> None:
         if plot is not None:
             write_bytes(plot, picture(model, loop.signals.measurement.unit, plot.suffix))
         sys.stdout.write(model_text(model) if json else model_lines(model, loop) + "\n")
-        return 4 if model.trust == "none" else 0
+        return CANNOT_ANSWER if model.trust == "none" else 0

@@ -8,8 +8,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from auditor.cli.audit import CANNOT_ANSWER
-from auditor.cli.options import JOBS, Json, LoopFile, ModelFile, Quick, Seed
+from auditor.cli.options import CANNOT_ANSWER, JOBS, Json, LoopFile, ModelFile, Quick, Seed
 from auditor.errors import CommandError, Problem
 
 if TYPE_CHECKING:
@@ -48,9 +47,11 @@ def register(app: typer.Typer) -> None:
         from auditor.loopfile import read_loop
         from auditor.panel import one_setting
         from auditor.report.as_json import replay_json
-        from auditor.report.series import series_bytes
+        from auditor.report.series import check_suffix, series_bytes
 
         values = parse(given or [])
+        if series is not None:
+            check_suffix(series.suffix)
         loop = read_loop(loopfile)
         setting = one_setting(rule, values, loop, link)
         with progress_on_stderr(quiet=json) as progress:
@@ -88,14 +89,12 @@ def parse(pairs: list[str]) -> dict[str, float]:
     CommandError
         A pair is not KEY=VALUE, or the value is neither a number nor a duration.
     """
-    from auditor.loopfile.durations import seconds
-
     values: dict[str, float] = {}
     problems: list[Problem] = []
     for pair in pairs:
         name, _, text = pair.partition("=")
         try:
-            key, value = _setting(name.strip(), text.strip(), seconds)
+            key, value = _setting(name.strip(), text.strip())
             values[key] = value
         except ValueError:
             problems.append(
@@ -110,10 +109,12 @@ def parse(pairs: list[str]) -> dict[str, float]:
     return values
 
 
-def _setting(name: str, text: str, seconds) -> tuple[str, float]:  # type: ignore[no-untyped-def]
+def _setting(name: str, text: str) -> tuple[str, float]:
+    from auditor.loopfile.durations import seconds
+
     if not name or not text:
         raise ValueError(text)
     in_time = name in ("min_gap", "max_silence") or text[-1].isalpha()
     if not in_time:
         return name, float(text)
-    return (name if name.endswith("_s") else f"{name}_s"), float(seconds(text))
+    return (name if name.endswith("_s") else f"{name}_s"), seconds(text)

@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from auditor.cli.screen import paragraph, table
+
+if TYPE_CHECKING:
+    from auditor.rules import Rule
 
 
 def register(app: typer.Typer) -> None:
@@ -25,7 +28,7 @@ def register(app: typer.Typer) -> None:
         print("\nGuards for every rule: min_gap, max_silence. `auditor rules NAME` tells more.")
 
 
-def page(rule) -> str:  # type: ignore[no-untyped-def]
+def page(rule: Rule) -> str:
     """One rule in full."""
     rows = [
         [s.name, s.unit or "-", "must be given" if s.default is None else f"{s.default:g}", s.meaning]

@@ -51,11 +51,13 @@ def shortlist(audit: Audit) -> str:
 
 def _nearer(audit: Audit, a: int, b: int) -> bool:
     """True when setting a is a better example of its rule: an acceptable error first, then fewer updates."""
-    limit = audit.loop.accept.max_rms_error or 1.25 * (audit.baseline.rms_error if audit.baseline else 1.0)
+    from auditor.objections import accepted_rms_error
+
+    limit = accepted_rms_error(audit.loop, audit.baseline)
 
     def rank(i: int) -> tuple[bool, float]:
         r = audit.replays[i]
-        fine = r.measures.rms_error <= limit
+        fine = limit is not None and r.measures.rms_error <= limit
         return (not fine, r.measures.updates if fine else r.measures.rms_error)
 
     return rank(a) < rank(b)
@@ -149,22 +151,44 @@ def findings_table(record: Record) -> str:
 
 
 def asked_of_log(record: Record, loop: Loop) -> str:
-    """What can and cannot be asked of this log."""
-    from auditor.replay.refusals import DEADBANDS, LOG_STEPS, QUANTA
+    """What can and cannot be asked of this log, each bound with its reason."""
+    lines = [
+        f"smallest threshold that can be asked about: {_smallest_threshold(record, loop)}",
+        f"shortest update interval that can be asked about: {_shortest_interval(record)}",
+        f"verdict: {_enough_hours(record, loop)}",
+    ]
+    if not loop.limits.stated:
+        lines.append("no verdict and no danger of leaving the limits without band and low or high under [limits]")
+    return bullets(lines)
+
+
+def _smallest_threshold(record: Record, loop: Loop) -> str:
+    from auditor.replay.refusals import DEADBANDS, QUANTA
 
     unit = loop.signals.measurement.unit
     floors = [
-        (QUANTA * (record.y_quantum or 0.0), "three steps of the stored measurement"),
-        (DEADBANDS * (record.y_deadband or 0.0), "four dead-bands of the archive"),
+        (QUANTA * (record.y_quantum or 0.0), "three steps of the stored measurement: below, they flip with rounding"),
+        (DEADBANDS * (record.y_deadband or 0.0), "four dead-bands of the archive, which left smaller moves out"),
     ]
     size, why = max(floors)
-    step = max(record.log_step, record.period)
-    gap = LOG_STEPS * step if record.log_step > 1.5 * record.period else record.period
-    smallest = f"{number(size)} {unit} ({why})" if size else "no bound from the log"
-    return (
-        f"smallest threshold that can be asked about: {smallest}\n"
-        f"shortest update interval that can be asked about: {duration(gap)}"
-    )
+    return f"{number(size)} {unit} ({why})" if size else "no bound from the log (no step or dead-band is visible in it)"
+
+
+def _shortest_interval(record: Record) -> str:
+    from auditor.replay.refusals import LOG_STEPS
+
+    if record.log_step <= 1.5 * record.period:
+        return f"{duration(record.period)} (the base period)"
+    step = duration(record.log_step)
+    return f"{duration(LOG_STEPS * record.log_step)} on average (five rows of the log, which has one every {step})"
+
+
+def _enough_hours(record: Record, loop: Loop) -> str:
+    hours, asked = float(record.in_span.sum()) * record.period / 3600.0, loop.accept.min_hours
+    held = f"the usable spans hold {number(hours)} h, of which the warm-up still goes off"
+    if hours < asked:
+        return f"cannot be given; {held}, and {number(asked)} h are asked for"
+    return f"{held}; {number(asked)} h are asked for"
 
 
 def model_lines(model: Model, loop: Loop) -> str:

@@ -11,12 +11,12 @@ from __future__ import annotations
 import numpy as np
 
 from auditor.arrays import BoolArray
-from auditor.dangers.base import Case, Evidence, Stretch, near_limits, quantity, worst
+from auditor.dangers.base import Case, Evidence, Stretch, near_limits, worst
 from auditor.dangers.interval import longer_than, longest_run
-from auditor.text import duration
+from auditor.text import duration, quantity
 
 CAUSE = "band"
-MEANING = "The error stays outside its band for longer than the loop needs to settle and than the record ever did."
+MEANING = "outside the band for too long"
 
 
 def find(case: Case) -> dict[str, BoolArray]:

@@ -15,10 +15,11 @@ import numpy as np
 
 from auditor.arrays import BoolArray, FloatArray
 from auditor.identify.plant import Model
+from auditor.identify.thresholds import DIVERGED
 from auditor.logs.record import Record, Span
 from auditor.loop import Loop
 from auditor.replay import Setting
-from auditor.text import duration, number, percent
+from auditor.text import duration, percent
 
 SEEN = 0.05
 """Share of the likely plants below which a danger is not reported."""
@@ -28,9 +29,6 @@ LIKELY = 0.5
 
 NULL = 1e-6
 """Differences below this share of the error's deviation are rounding: a replay of an exact log returns it to that."""
-
-DIVERGED = 1e6
-"""A lane this many error deviations away from the record would not have been stable."""
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -190,7 +188,7 @@ class Detector(Protocol):
     """Name of the cause, as in `audit.json`."""
 
     MEANING: str
-    """One sentence for tables."""
+    """What it means, in a few words for tables."""
 
     def find(self, case: Case) -> dict[str, BoolArray]:
         """Return masks of shape (N, L), one per clause, True where a lane is in danger; none when it does not apply."""
@@ -235,8 +233,3 @@ def worst(case: Case, amount: FloatArray, mask: BoolArray) -> float:
     """
     largest = np.where(mask, amount, 0.0).max(axis=0)[mask.any(axis=0)]
     return float(np.median(np.minimum(largest, DIVERGED * case.scale)))
-
-
-def quantity(value: float, unit: str, digits: int = 2) -> str:
-    """Write a number with its unit."""
-    return f"{number(value, digits)} {unit}".rstrip()

@@ -17,7 +17,7 @@ from auditor.dangers.interval import longer_than
 from auditor.text import duration
 
 CAUSE = "blind"
-MEANING = "No usable data for longer than the loop needs to settle: what happened there is not known."
+MEANING = "unusable data inside the horizon"
 
 
 def find(case: Case) -> dict[str, BoolArray]:

@@ -1,11 +1,11 @@
 """More updates than the link can carry, or updates at every sample as if there were no rule.
 
 Two clauses. Over budget: more of the loop's own updates in any `channel.window` than `max_messages` less
-`other_traffic`; marked from the first to the last update of every such window. Continuous: an update at every
-sample for longer than the settling time; a clock (`periodic`) is left out here, because updating at every sample is
-then what was asked for and what the recorded loop did. It is "danger" only where at least half of the likely plants
-are over a declared budget: at the base rate the loop itself runs as recorded. Evidence: the most updates in one
-window against the budget, or how long the run of updates was.
+`other_traffic`, or than `airtime` and `duty_cycle` leave room for; marked from the first to the last update of every
+such window. Continuous: an update at every sample for longer than the settling time; a clock (`periodic`) is left out
+here, because updating at every sample is then what was asked for and what the recorded loop did. It is "danger" only
+where at least half of the likely plants are over a declared budget: at the base rate the loop itself runs as
+recorded. Evidence: the most updates in one window against the budget, or how long the run of updates was.
 """
 
 from __future__ import annotations
@@ -21,7 +21,7 @@ from auditor.loop import Channel
 from auditor.text import duration, number
 
 CAUSE = "burst"
-MEANING = "More updates than the channel can carry in its window, or updates at every sample for a settling time."
+MEANING = "more updates than the link should carry"
 
 
 def find(case: Case) -> dict[str, BoolArray]:
@@ -57,8 +57,17 @@ def describe(case: Case, stretch: Stretch) -> Evidence:
 
 
 def _budget(channel: Channel) -> float:
-    """Messages a window has room for."""
-    return channel.max_messages - channel.other_traffic
+    """Messages of this loop that a window has room for.
+
+    With a stated airtime no more than fit into the window one after the other, others' included; with a duty cycle no
+    more than its share of the window, which binds each sender by itself.
+    """
+    counted = channel.max_messages - channel.other_traffic
+    if channel.airtime is None:
+        return counted
+    fitting = channel.window / channel.airtime
+    own = fitting - channel.other_traffic if channel.duty_cycle is None else channel.duty_cycle * fitting
+    return min(counted, own)
 
 
 def _window(case: Case) -> int:

@@ -17,11 +17,13 @@ from typing import Final
 import numpy as np
 
 from auditor.arrays import BoolArray, FloatArray
-from auditor.dangers.base import DIVERGED, Case, Evidence, Stretch, quantity, worst
+from auditor.dangers.base import Case, Evidence, Stretch, worst
 from auditor.dangers.interval import merged
+from auditor.identify.thresholds import DIVERGED
+from auditor.text import quantity
 
 CAUSE = "growth"
-MEANING = "The replay drifts away from the record by more than the likely plants agree on."
+MEANING = "drifting away from what was recorded"
 
 TAIL: Final = 0.05
 """Share of the likely plants left out on either side when their difference is taken."""

@@ -14,10 +14,11 @@ from dataclasses import dataclass
 import numpy as np
 
 from auditor.arrays import BoolArray, FloatArray
-from auditor.dangers.base import Case, Evidence, Stretch, quantity, worst
+from auditor.dangers.base import Case, Evidence, Stretch, worst
+from auditor.text import quantity
 
 CAUSE = "limit"
-MEANING = "The process leaves its stated limits where the record stays inside, or leaves them by a band more."
+MEANING = "outside the process limits"
 
 
 @dataclass(frozen=True, slots=True)

@@ -15,10 +15,11 @@ from typing import Final
 import numpy as np
 
 from auditor.arrays import BoolArray, FloatArray
-from auditor.dangers.base import Case, Evidence, Stretch, quantity, worst
+from auditor.dangers.base import Case, Evidence, Stretch, worst
+from auditor.text import quantity
 
 CAUSE = "outside-model"
-MEANING = "The measurement or the actuator is outside the range on which the model was identified."
+MEANING = "outside the range the model was identified on"
 
 MARGIN: Final = 0.25
 """Allowed beyond the range on either side, as a share of its width."""

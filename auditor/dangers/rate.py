@@ -14,11 +14,12 @@ import math
 import numpy as np
 
 from auditor.arrays import BoolArray, FloatArray
-from auditor.dangers.base import NULL, Case, Evidence, Stretch, near_limits, quantity
+from auditor.dangers.base import NULL, Case, Evidence, Stretch, near_limits
 from auditor.dangers.interval import widened
+from auditor.text import quantity
 
 CAUSE = "rate"
-MEANING = "The actuator moves at its slew limit where the record does not."
+MEANING = "actuator at its slew limit"
 
 
 def find(case: Case) -> dict[str, BoolArray]:

@@ -14,11 +14,12 @@ import math
 import numpy as np
 
 from auditor.arrays import BoolArray, FloatArray
-from auditor.dangers.base import NULL, Case, Evidence, Stretch, quantity
+from auditor.dangers.base import NULL, Case, Evidence, Stretch
 from auditor.dangers.interval import widened
+from auditor.text import quantity
 
 CAUSE = "saturation"
-MEANING = "The actuator is at a limit where the record is not."
+MEANING = "actuator at a limit"
 
 
 def find(case: Case) -> dict[str, BoolArray]:

@@ -15,12 +15,12 @@ import math
 import numpy as np
 
 from auditor.arrays import BoolArray
-from auditor.dangers.base import Case, Evidence, Stretch, near_limits, quantity
+from auditor.dangers.base import Case, Evidence, Stretch, near_limits
 from auditor.dangers.interval import Runs, find_runs, longer_than, longest_run, paint
-from auditor.text import duration
+from auditor.text import duration, quantity
 
 CAUSE = "silence"
-MEANING = "No update for longer than acceptable, or none for a time constant while the error is outside its band."
+MEANING = "too long without an update"
 
 
 def find(case: Case) -> dict[str, BoolArray]:

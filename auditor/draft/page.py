@@ -8,9 +8,9 @@ from collections.abc import Iterable, Mapping, Sequence
 from auditor.draft.columns import Column
 from auditor.draft.guess import Guess
 from auditor.draft.guesses import quoted
+from auditor.text import FILL_IN
 
 WIDTH = 100
-FILL_IN = "# FILL IN"
 
 _HEAD = """\
 # Loop file drafted by looking at {log}{part}.

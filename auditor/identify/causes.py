@@ -31,9 +31,6 @@ from auditor.text import duration, number, percent
 _RESTING = 0.5
 """Share of samples at which a compressed or rounded actuator rests while the error moves."""
 
-_NOTHING_LEFT = 1e-9
-"""Null replays below this differ by floating point only."""
-
 _MANUAL = 60
 """Samples in a row at which a free actuator must rest before it looks like manual operation."""
 
@@ -82,7 +79,7 @@ def _mended(record: Record, controller: Pid, plant: Plant, null: float) -> tuple
     """Return the changes that mend most; the gains only where no other name for the same law does."""
 
     def after(words: str, other: Pid, shifted: Record = record) -> _Mend:
-        return _Mend(words, max(_NOTHING_LEFT, null_replay(shifted, other, plant)))
+        return _Mend(words, max(thresholds.NOTHING_LEFT, null_replay(shifted, other, plant)))
 
     mends = [after(skew_words(lag), controller, shift_actuator(record, lag)) for lag in (1, -1, 2, -2)]
     mends += [after(words, other) for words, other in (*_limits(record, controller), *_forms(controller))]

@@ -11,7 +11,7 @@ import numpy as np
 
 from auditor.logs.record import Record
 from auditor.loop import Loop
-from auditor.text import duration, number
+from auditor.text import duration, quantity
 
 STEP_IN_ERRORS = 3.0
 BUMP_IN_ACTUATORS = 1.0
@@ -40,13 +40,9 @@ def suggest(record: Record, loop: Loop, tau_cl_s: float | None = None) -> str:
         )
     if step == 0.0:
         return "What would settle it: a log in which the measurement moves while the loop is in automatic operation."
-    step_size = _with_unit(step, loop.signals.measurement.unit)
-    bump_size = _with_unit(bump, loop.signals.actuator.unit)
+    step_size = quantity(step, loop.signals.measurement.unit)
+    bump_size = quantity(bump, loop.signals.actuator.unit)
     return (
         f"What would settle it: one setpoint step of about {step_size} held for {hold}, twice, or one manual interval "
         f"of {hold} that starts with an actuator bump of {bump_size}; then the same audit on the longer log."
     )
-
-
-def _with_unit(value: float, unit: str) -> str:
-    return f"{number(value, 2)} {unit}".rstrip()

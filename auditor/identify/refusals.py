@@ -50,7 +50,7 @@ def too_few_rows(record: Record) -> Problem:
 def after_fitting(record: Record, signals: Signals, match: Match) -> Problem | None:
     """Return why the best controller found is none, or None when it may be used."""
     left = _left_of_movement(record, signals, match)
-    if left <= thresholds.UNEXPLAINED_LIMIT or _level_explained(record, match):
+    if left <= thresholds.UNEXPLAINED_LIMIT or _level_explained(record, signals, match):
         at_edge = abs(match.lag) == thresholds.LONGEST_SKEW and match.fit.relative > thresholds.UNEXPLAINED_LEVEL
         return _far_off(match) if at_edge else None
     return Problem(
@@ -62,10 +62,20 @@ def after_fitting(record: Record, signals: Signals, match: Match) -> Problem | N
     )
 
 
-def _level_explained(record: Record, match: Match) -> bool:
-    """True when the actuator's level is explained to its own noise, or to its rounding."""
-    rounding_only = match.fit.scale <= 0.5 * (record.u_quantum or 0.0)
-    return match.levels and (rounding_only or match.fit.relative <= thresholds.UNEXPLAINED_LEVEL)
+def _level_explained(record: Record, signals: Signals, match: Match) -> bool:
+    """True when the actuator's level is explained to its own noise, or to its rounding.
+
+    What is left must look like noise: one large move inside a log (a shutdown) makes any fit leave little of the level.
+    """
+    if not match.levels:
+        return False
+    if match.fit.scale <= 0.5 * (record.u_quantum or 0.0):
+        return True
+    design = lay_out(signals, match.lag, match.terms, levels=True)
+    rest = residual_of(design, match.fit.coefficients, np.ones(len(design.target)))
+    power = float(np.mean(rest**2))
+    persistence = float(np.mean(rest[1:] * rest[:-1])) / power if power > 0.0 else 0.0
+    return match.fit.relative <= thresholds.UNEXPLAINED_LEVEL and persistence <= thresholds.NOISE_PERSISTENCE
 
 
 def _left_of_movement(record: Record, signals: Signals, match: Match) -> float:

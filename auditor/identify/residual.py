@@ -24,14 +24,8 @@ from auditor.logs.record import Record
 _FLOATING = 1e-12
 """Resolution of an actuator that is not rounded, as a share of its largest value."""
 
-_NOTHING_LEFT = 1e-9
-"""Null replays below this differ by floating point only."""
-
 _MEMORY = 3
 """Earlier moves of the error that may explain rho: a derivative's filter forgets in about as many samples."""
-
-_DIVERGED = 1e6
-"""Deviations of the error beyond which a replay has diverged."""
 
 _TRACKING = (0.0, 0.25, 0.5, 1.0, 2.0)
 """Tracking times tried, as shares of the integral time."""
@@ -105,7 +99,7 @@ def null_replay(
         return math.inf
     if not np.any(away):
         return 0.0
-    if deviation == 0.0 or float(np.max(np.abs(away))) > _DIVERGED * deviation:
+    if deviation == 0.0 or float(np.max(np.abs(away))) > thresholds.DIVERGED * deviation:
         return math.inf
     return float(np.std(away)) / deviation
 
@@ -136,7 +130,7 @@ def choose_anti_windup(record: Record, controller: Pid, plant: Plant) -> Pid:
     if not saturates(record) or not math.isfinite(controller.integral_time):
         return controller
     candidates = [controller, anti_windup_of(record, controller), *_schemes(controller)]
-    return min(candidates, key=lambda scheme: max(_NOTHING_LEFT, null_replay(record, scheme, plant)))
+    return min(candidates, key=lambda scheme: max(thresholds.NOTHING_LEFT, null_replay(record, scheme, plant)))
 
 
 def explained_by_error(rho: FloatArray, record: Record) -> float:

@@ -12,6 +12,12 @@ NULL_GOOD = 0.01
 NULL_LIMIT = 0.10
 """From here on a replay is about another controller than the recorded one: at most limited trust (method, §2)."""
 
+NOTHING_LEFT = 1e-9
+"""Null replays below this differ by floating point only."""
+
+DIVERGED = 1e6
+"""A replay this many deviations of the error away from the record would not have been stable (method, §8)."""
+
 EXPLAINED_SHARE = 0.90
 """Above `NULL_LIMIT` an answer needs this share of the unexplained actuator to have a known origin (method, §2)."""
 
@@ -25,6 +31,10 @@ long before this."""
 
 UNEXPLAINED_LEVEL = 0.1
 """The same for an actuator whose own noise hides its movement between samples: what is left of its level."""
+
+NOISE_PERSISTENCE = 0.7
+"""Correlation of neighbouring residuals up to which what is left of a level counts as the actuator's own noise; what is
+left after a wrong fit through a shutdown keeps its sign for hours."""
 
 EXACT = 1e-6
 """Relative residual below which a log counts as exact: such a log has no rounding that could matter."""

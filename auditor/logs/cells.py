@@ -7,6 +7,7 @@ An empty cell, and the words nan and null, are no number and nothing is said abo
 from __future__ import annotations
 
 from collections import Counter
+from collections.abc import Mapping
 from typing import Any, TypeAlias
 
 import numpy as np
@@ -171,7 +172,12 @@ def _whole(column: pa.ChunkedArray) -> bool:
 
 def shown_counts(texts: TextArray) -> str:
     """Count each text, most frequent first: ``340 × "Bad", 2 × "Scan Timeout"``."""
-    counts = sorted(Counter(texts.tolist()).items(), key=lambda item: (-item[1], item[0]))
+    return shown_tally(Counter(texts.tolist()))
+
+
+def shown_tally(tally: Mapping[str, int]) -> str:
+    """Tell counted texts, most frequent first."""
+    counts = sorted(tally.items(), key=lambda item: (-item[1], item[0]))
     shown = ", ".join(f'{count} × "{text[:40]}"' for text, count in counts[:_SHOWN])
     rest = sum(count for _, count in counts[_SHOWN:])
     return shown + (f", {rest} × {len(counts) - _SHOWN} other texts" if rest else "")

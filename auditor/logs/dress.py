@@ -13,10 +13,10 @@ import re
 from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass
-from pathlib import Path
 
 from auditor.errors import LogError, Problem
-from auditor.logs.files import UNREADABLE, head, wide_encoding
+from auditor.logs.files import wide_encoding
+from auditor.logs.packed import UNREADABLE, Place, head
 from auditor.logs.raw_table import Wanted, time_columns
 from auditor.loop import LogSource
 
@@ -74,7 +74,7 @@ class _Sheet:
     header: int
 
 
-def look(path: Path, label: str, source: LogSource, wanted: Wanted) -> Dress:
+def look(path: Place, label: str, source: LogSource, wanted: Wanted) -> Dress:
     """Find out how the text log at `path` is dressed.
 
     Raises
@@ -94,7 +94,7 @@ def look(path: Path, label: str, source: LogSource, wanted: Wanted) -> Dress:
     return _dress(max(sheets, key=lambda sheet: _score(sheet, wanted)), encoding, source.decimal, wanted)
 
 
-def _sample(path: Path, label: str) -> tuple[bytes, bool]:
+def _sample(path: Place, label: str) -> tuple[bytes, bool]:
     """Return the beginning of the file, and whether it is the whole."""
     try:
         raw, size = head(path, _SAMPLE), _SAMPLE

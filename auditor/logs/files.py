@@ -6,26 +6,22 @@ A file is recognised by its content, not by its name: exports are renamed more o
 from __future__ import annotations
 
 import glob
-import gzip
 import hashlib
-import io
 import zipfile
-import zlib
 from collections.abc import Iterable
 from pathlib import Path
-from typing import IO, cast
 from urllib.parse import urlparse
 from urllib.request import url2pathname
 
 from auditor.errors import LogError, Problem, raise_all
+from auditor.logs.packed import UNREADABLE, ZIP, Member, Place, head, members
 from auditor.logs.record import InputFile
 from auditor.loop import LogSource
 from auditor.text import nearest
 
 PARQUET_SUFFIXES = (".parquet", ".pq", ".parq")
-TEXT_SUFFIXES = (".csv", ".tsv", ".txt", ".csv.gz", ".tsv.gz", ".txt.gz")
-GZIP = b"\x1f\x8b"
-UNREADABLE = (OSError, EOFError, zlib.error)
+TEXT_SUFFIXES = tuple(name + packing for packing in ("", ".gz", ".zst") for name in (".csv", ".tsv", ".txt"))
+ARCHIVE_SUFFIXES = (".zip",)
 
 _AS_CSV = "open it in the program it came from and save the sheet as CSV (UTF-8), then give that file"
 _QUERY = "write the query's result to CSV or Parquet, then give that file"
@@ -41,7 +37,6 @@ _STRANGERS: tuple[tuple[bytes, str, str], ...] = (
     (b"7z\xbc\xaf\x27\x1c", "a packed archive", "unpack it and give the file inside"),
     (b"BZh", "a file packed with bzip2", "unpack it, or pack it with gzip"),
     (b"\xfd7zXZ\x00", "a file packed with xz", "unpack it, or pack it with gzip"),
-    (b"\x28\xb5\x2f\xfd", "a file packed with Zstandard", "unpack it, or pack it with gzip"),
 )
 _PAGES: tuple[tuple[bytes, str], ...] = (
     (b"<!doctype html", "a web page"),
@@ -99,12 +94,12 @@ def _local(entry: str) -> str:
 
 def _in_folder(path: Path, entry: str) -> list[Path]:
     inside = [p for p in sorted(path.rglob("*")) if p.is_file() and not _hidden(p.relative_to(path))]
-    for suffixes in (PARQUET_SUFFIXES, TEXT_SUFFIXES):
+    for suffixes in (PARQUET_SUFFIXES, TEXT_SUFFIXES, ARCHIVE_SUFFIXES):
         chosen = [p for p in inside if p.name.lower().endswith(suffixes)]
         if chosen:
             return chosen
     some = ", ".join(p.name for p in inside[:5]) or "nothing"
-    expected = f"files ending in {', '.join(PARQUET_SUFFIXES + TEXT_SUFFIXES)}"
+    expected = f"files ending in {', '.join(PARQUET_SUFFIXES + TEXT_SUFFIXES + ARCHIVE_SUFFIXES)}"
     what = "The folder holds no log."
     raise LogError(Problem(what=what, where=entry, found=some, expected=expected, do="give the files by a pattern"))
 
@@ -136,8 +131,24 @@ def _missing(path: Path, entry: str) -> Problem:
     return Problem(what="The log does not exist.", where=entry, found=found, do=do)
 
 
-def label(path: Path, folder: Path) -> str:
+def expand(path: Path, folder: Path) -> tuple[Place, ...]:
+    """Return the logs in a zip archive, and any other file itself.
+
+    Raises
+    ------
+    LogError
+        When the archive is encrypted, or unpacks to more than 2 GB and to more than 200 times its size.
+    """
+    try:
+        return members(path, label(path, folder), (PARQUET_SUFFIXES, TEXT_SUFFIXES)) or (path,)
+    except OSError:
+        return (path,)  # reading it will tell
+
+
+def label(path: Place, folder: Path) -> str:
     """Name a file the way its loop file would: relative to the folder where it can be, with forward slashes."""
+    if isinstance(path, Member):
+        return f"{label(path.archive, folder)}/{path.name}"
     try:
         return path.resolve().relative_to(folder.resolve()).as_posix()
     except ValueError:
@@ -155,25 +166,7 @@ def _describe(path: Path, folder: Path) -> InputFile:
     return InputFile(path=label(path, folder), bytes=path.stat().st_size, sha256=digest)
 
 
-def open_bytes(path: Path) -> IO[bytes]:
-    """Open a file for reading, unpacked when it is gzip."""
-    with path.open("rb") as file:
-        packed = file.read(2) == GZIP
-    return cast("IO[bytes]", gzip.open(path, "rb")) if packed else path.open("rb")
-
-
-def open_text(path: Path, encoding: str) -> IO[str]:
-    """Open a text log for reading line by line; letters that do not decode are replaced."""
-    return io.TextIOWrapper(open_bytes(path), encoding=encoding, errors="replace", newline=None)
-
-
-def head(path: Path, size: int) -> bytes:
-    """Return the first `size` bytes of a file, unpacked when it is gzip."""
-    with open_bytes(path) as file:
-        return file.read(size)
-
-
-def kind(path: Path, name: str) -> str:
+def kind(path: Place, name: str) -> str:
     """Tell "csv" from "parquet" by looking inside; `name` is what the file is called in errors.
 
     Raises
@@ -192,7 +185,7 @@ def kind(path: Path, name: str) -> str:
     return "csv"
 
 
-def _refuse(path: Path, name: str, start: bytes) -> None:
+def _refuse(path: Place, name: str, start: bytes) -> None:
     if not start.strip(b" \t\r\n\xef\xbb\xbf"):
         what = "The log is empty."
         raise LogError(Problem(what=what, where=name, found=f"{len(start)} bytes", do="export it again"))
@@ -206,8 +199,8 @@ def _refuse(path: Path, name: str, start: bytes) -> None:
         raise LogError(Problem(what=what, where=name, expected="a text file (CSV) or a Parquet file", do=stranger[1]))
 
 
-def _stranger(path: Path, start: bytes) -> tuple[str, str] | None:
-    if start.startswith(b"PK\x03\x04"):
+def _stranger(path: Place, start: bytes) -> tuple[str, str] | None:
+    if start.startswith(ZIP):
         return _zipped(path)
     for page, what in _PAGES:
         if start.lstrip(b"\xef\xbb\xbf \r\n\t").lower().startswith(page):
@@ -215,7 +208,9 @@ def _stranger(path: Path, start: bytes) -> tuple[str, str] | None:
     return next(((what, do) for magic, what, do in _STRANGERS if start.startswith(magic)), None)
 
 
-def _zipped(path: Path) -> tuple[str, str]:
+def _zipped(path: Place) -> tuple[str, str]:
+    if isinstance(path, Member):
+        return "an archive or a spreadsheet inside a zip archive", "unpack it and give the files inside"
     try:
         with zipfile.ZipFile(path) as archive:
             names = archive.namelist()

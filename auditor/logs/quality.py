@@ -53,10 +53,19 @@ _MOST_SHOWN = 8
 
 def read_codes(column: pa.ChunkedArray) -> tuple[IntArray, tuple[str, ...]]:
     """Return, for every row, the place of its code among the codes met, and these as text ("" for an empty cell)."""
-    words = pc.dictionary_encode(plain_words(column)).combine_chunks()
-    if isinstance(words, pa.ChunkedArray):
-        words = words.unify_dictionaries().chunk(0)
-    return np.asarray(words.indices.to_numpy(), dtype=np.int64), tuple(words.dictionary.to_pylist())
+    coded = column if pa.types.is_dictionary(column.type) else pc.dictionary_encode(column)
+    coded = coded.unify_dictionaries().combine_chunks()
+    if isinstance(coded, pa.ChunkedArray):
+        coded = coded.chunk(0)
+    # One more place, for empty cells; a dictionary may hold texts that no row has, and one text in two dresses.
+    met = plain_words(pa.chunked_array([coded.dictionary])).to_pylist()
+    indices = np.asarray(pc.fill_null(coded.indices, len(met)).to_numpy(), dtype=np.int64)
+    used = np.flatnonzero(np.bincount(indices, minlength=len(met) + 1))
+    places: dict[str, int] = {}
+    remap = np.zeros(len(met) + 1, dtype=np.int64)
+    for index in used.tolist():
+        remap[index] = places.setdefault(met[index] if index < len(met) else "", len(places))
+    return remap[indices], tuple(places)
 
 
 def grades(codes: Iterable[str], source: LogSource) -> dict[str, Grade]:
@@ -80,11 +89,11 @@ def grades(codes: Iterable[str], source: LogSource) -> dict[str, Grade]:
     found |= {code: Grade.STALE for code in known if _plain(code) in stale}
     rest = [code for code in known if code not in found]
     if good:
-        return found | {code: Grade.BAD for code in rest}
-    numbers = {code: number for code in rest if (number := _number(code)) is not None}
-    grade = _standard(list(numbers.values()), bool(source.stale))
+        return found | dict.fromkeys(rest, Grade.BAD)
+    numbers = {code: number for code in known if (number := _number(code)) is not None}
+    grade = _standard(list(numbers.values()))
     if grade is not None:
-        found |= {code: grade(number) for code, number in numbers.items()}
+        found = {code: grade(number) for code, number in numbers.items()} | found
     found |= {code: word for code in rest if code not in numbers and (word := _word(code)) is not None}
     unknown = [code for code in rest if code not in found and code]
     if unknown:
@@ -112,7 +121,7 @@ def _number(code: str) -> int | None:
     return number + 2**32 if -(2**31) <= number < 0 else number
 
 
-def _standard(numbers: Sequence[int], stated: bool) -> Callable[[int], Grade] | None:
+def _standard(numbers: Sequence[int]) -> Callable[[int], Grade] | None:
     """Tell by which standard numbers are codes; None when they follow none that can be told.
 
     Zero alone is good as a status word: as a byte it would be bad, and a log of bad values only is kept by nobody.
@@ -122,8 +131,8 @@ def _standard(numbers: Sequence[int], stated: bool) -> Callable[[int], Grade] | 
     bytes_seen = any(number & 0xFF >= _GOOD_BYTE for number in numbers)
     if max(numbers) >= 2**16 or (max(numbers) > 255 and not bytes_seen) or set(numbers) == {0}:
         return _of_status_word
-    # Stated stale codes may have taken the rest away; without any good byte small numbers are somebody's own.
-    return _of_byte if bytes_seen or (stated and min(numbers) >= _UNCERTAIN_BYTE) else None
+    # Without any good byte small numbers are somebody's own codes.
+    return _of_byte if bytes_seen else None
 
 
 def _of_status_word(number: int) -> Grade:

@@ -21,23 +21,28 @@ _Result = TypeVar("_Result")
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
 class Wanted:
-    """The columns a loop needs: `numbers` maps a column to the loop file key that names it."""
+    """The columns a loop needs; `numbers` maps a column to the loop file key that names it, `clock` is the time's."""
 
     time: str
     numbers: Mapping[str, str]
     mode: str | None = None
     tag: str | None = None
     quality: str | None = None
+    clock: str = "log.time"
 
     def names(self) -> dict[str, str]:
         """Map every column to the loop file key that names it, the time column first."""
         others = {self.mode: "signals.mode", self.tag: "log.tag", self.quality: "log.quality"}
-        return {self.time: "log.time"} | dict(self.numbers) | {n: key for n, key in others.items() if n is not None}
+        return {self.time: self.clock} | dict(self.numbers) | {n: key for n, key in others.items() if n is not None}
+
+    def coded(self) -> list[str]:
+        """List the columns that hold few different texts, which readers keep as a dictionary where they can."""
+        return [name for name in (self.tag, self.quality) if name is not None]
 
     def columns(self, names: Sequence[str]) -> list[str]:
         """List the columns to read from a file whose own are `names`, each once."""
-        others = [name for name in (self.mode, self.tag, self.quality) if name is not None]
-        return list(dict.fromkeys([*time_columns(self.time, names), *self.numbers, *others]))
+        mode = [self.mode] if self.mode is not None else []
+        return list(dict.fromkeys([*time_columns(self.time, names), *self.numbers, *mode, *self.coded()]))
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -97,16 +102,41 @@ def _filtered(column: pa.ChunkedArray | None, mask: pa.BooleanArray) -> pa.Chunk
 
 def wanted_columns(loop: Loop) -> Wanted:
     """List the columns of the log that the loop's signals name."""
+    mode = loop.signals.mode
+    numbers = {column: key for column, key, _ in _signals(loop)}
+    return Wanted(
+        time=loop.log.time, numbers=numbers, mode=mode.column if mode is not None else None, quality=loop.log.quality
+    )
+
+
+def wanted_by_clock(loop: Loop) -> list[Wanted]:
+    """List the columns that share a time column, for every time column that the loop's signals name."""
+    source, mode = loop.log, loop.signals.mode
+    groups: dict[str, Wanted] = {}
+    for column, key, time in _signals(loop):
+        clock = source.time if time is None else time
+        named = "log.time" if time is None else f"{key}.time"
+        group = groups.get(clock) or Wanted(time=clock, numbers={}, quality=source.quality, clock=named)
+        groups[clock] = replace(group, numbers={**group.numbers, column: key})
+    if mode is not None:
+        clock = source.time if mode.time is None else mode.time
+        named = "log.time" if mode.time is None else "signals.mode.time"
+        group = groups.get(clock) or Wanted(time=clock, numbers={}, quality=source.quality, clock=named)
+        groups[clock] = replace(group, mode=mode.column)
+    return list(groups.values())
+
+
+def _signals(loop: Loop) -> list[tuple[str, str, str | None]]:
+    """List column, loop file key and own time column of every signal that is a column, each column once."""
     signals = loop.signals
     roles = [("signals.measurement", signals.measurement), ("signals.setpoint", signals.setpoint)]
     roles += [("signals.actuator", signals.actuator)]
     roles += [(f"signals.disturbances[{k}]", signal) for k, signal in enumerate(signals.disturbances)]
-    numbers: dict[str, str] = {}
+    found: dict[str, tuple[str, str, str | None]] = {}
     for key, signal in roles:
         if signal.column is not None:
-            numbers.setdefault(signal.column, key)
-    mode = signals.mode.column if signals.mode else None
-    return Wanted(time=loop.log.time, numbers=numbers, mode=mode, quality=loop.log.quality)
+            found.setdefault(signal.column, (signal.column, key, signal.time))
+    return list(found.values())
 
 
 def time_columns(time: str, names: Sequence[str]) -> tuple[str, ...]:
@@ -124,7 +154,7 @@ def column_problems(wanted: Wanted, names: Sequence[str], label: str) -> list[Pr
     """List every wanted column that `names` (the file's own) does not have, or has twice."""
     problems = []
     for name, key in wanted.names().items():
-        if not (time_columns(name, names) if key == "log.time" else name in names):
+        if not (time_columns(name, names) if key == wanted.clock else name in names):
             problems.append(_missing(name, key, names, label, wanted))
         elif names.count(name) > 1:
             what = f'{names.count(name)} columns are called "{name}".'
@@ -138,7 +168,7 @@ def _missing(name: str, key: str, names: Sequence[str], label: str, wanted: Want
     close = next((n for n in spare if n.casefold() == name.casefold()), None) or nearest(name, spare)
     if close:
         do = f'did you mean "{close}"?'
-    elif key == "log.time" and "" in names:
+    elif key == wanted.clock and "" in names:
         do = 'set time = "" if it is the column without a name'
     else:
         do = f"set {key} to one of the columns found"

@@ -5,15 +5,14 @@ from __future__ import annotations
 import csv
 import itertools
 from dataclasses import replace
-from pathlib import Path
 
 import pyarrow as pa
 import pyarrow.csv
 
 from auditor.errors import LogError, Problem, raise_all
 from auditor.logs.dress import Dress, look
-from auditor.logs.files import GZIP, UNREADABLE, open_text
 from auditor.logs.findings.base import Finding
+from auditor.logs.packed import UNREADABLE, Place, open_text, stream
 from auditor.logs.raw_table import RawTable, Wanted, column_problems, time_columns
 from auditor.loop import LogSource
 
@@ -37,12 +36,12 @@ class _OddRows:
         return "skip" if len(self.texts) <= _MOST_ROWS else "error"
 
 
-def read_csv(path: Path, label: str, source: LogSource, wanted: Wanted) -> RawTable:
-    """Read the wanted columns of a text log, packed with gzip or not.
+def read_csv(path: Place, label: str, source: LogSource, wanted: Wanted) -> RawTable:
+    """Read the wanted columns of a text log, packed or not.
 
     Parameters
     ----------
-    path : Path
+    path : Path or Member
     label : str
         What the file is called in errors.
     source : LogSource
@@ -85,7 +84,7 @@ def _places(dress: Dress, wanted: Wanted) -> list[int]:
     return [dress.names.index(name) for name in wanted.columns(dress.names)]
 
 
-def _parse(path: Path, dress: Dress, wanted: Wanted, odd: _OddRows, stated: bool) -> tuple[pa.Table, Dress]:
+def _parse(path: Place, dress: Dress, wanted: Wanted, odd: _OddRows, stated: bool) -> tuple[pa.Table, Dress]:
     try:
         return _parse_as(path, dress, wanted, odd), dress
     except pa.ArrowInvalid as error:
@@ -97,8 +96,9 @@ def _parse(path: Path, dress: Dress, wanted: Wanted, odd: _OddRows, stated: bool
         return _parse_as(path, dress, wanted, odd), dress
 
 
-def _parse_as(path: Path, dress: Dress, wanted: Wanted, odd: _OddRows) -> pa.Table:
+def _parse_as(path: Place, dress: Dress, wanted: Wanted, odd: _OddRows) -> pa.Table:
     columns = [str(place) for place in _places(dress, wanted)]
+    coded = {str(dress.names.index(name)): pa.dictionary(pa.int32(), pa.string()) for name in wanted.coded()}
     read = pa.csv.ReadOptions(
         skip_rows=dress.lines_before,
         column_names=[str(place) for place in range(dress.cells)],
@@ -108,18 +108,12 @@ def _parse_as(path: Path, dress: Dress, wanted: Wanted, odd: _OddRows) -> pa.Tab
     cut = pa.csv.ParseOptions(delimiter=dress.delimiter, newlines_in_values=dress.multiline, invalid_row_handler=odd)
     convert = pa.csv.ConvertOptions(
         include_columns=columns,
-        column_types={name: pa.string() for name in columns},
+        column_types={name: pa.string() for name in columns} | coded,
         null_values=[""],
         strings_can_be_null=True,
     )
-    with _stream(path) as stream:
-        return pa.csv.read_csv(stream, read_options=read, parse_options=cut, convert_options=convert)
-
-
-def _stream(path: Path) -> pa.NativeFile:
-    with path.open("rb") as file:
-        packed = file.read(2) == GZIP
-    return pa.input_stream(str(path), compression="gzip" if packed else None)
+    with stream(path) as file:
+        return pa.csv.read_csv(file, read_options=read, parse_options=cut, convert_options=convert)
 
 
 def _unreadable(error: Exception, dress: Dress, odd: _OddRows, label: str) -> Problem:
@@ -148,7 +142,7 @@ def _no_rows(dress: Dress, label: str) -> Problem:
     return Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out")
 
 
-def _findings(path: Path, dress: Dress, odd: _OddRows, label: str) -> tuple[Finding, ...]:
+def _findings(path: Place, dress: Dress, odd: _OddRows, label: str) -> tuple[Finding, ...]:
     findings = []
     if dress.below_header:
         shown = " / ".join(_short(line) for line in dress.below_header)
@@ -159,7 +153,7 @@ def _findings(path: Path, dress: Dress, odd: _OddRows, label: str) -> tuple[Find
     return tuple(findings)
 
 
-def _odd_findings(path: Path, dress: Dress, odd: _OddRows, label: str) -> list[Finding]:
+def _odd_findings(path: Place, dress: Dress, odd: _OddRows, label: str) -> list[Finding]:
     """Tell lines after the last row (a footer) from broken lines among the rows."""
     lines, last_row = _find(path, dress, set(odd.texts))
     below = [text for number, text in lines if number > last_row]
@@ -177,7 +171,7 @@ def _odd_findings(path: Path, dress: Dress, odd: _OddRows, label: str) -> list[F
     return findings
 
 
-def _find(path: Path, dress: Dress, texts: set[str]) -> tuple[list[tuple[int, str]], int]:
+def _find(path: Place, dress: Dress, texts: set[str]) -> tuple[list[tuple[int, str]], int]:
     """Find lines by their text; also return the number of the last line that is a row."""
     found, last_row = [], dress.lines_before
     with open_text(path, dress.encoding) as file:
@@ -191,7 +185,7 @@ def _find(path: Path, dress: Dress, texts: set[str]) -> tuple[list[tuple[int, st
 
 
 def _raw_table(
-    table: pa.Table, path: Path, dress: Dress, wanted: Wanted, label: str, findings: tuple[Finding, ...]
+    table: pa.Table, path: Place, dress: Dress, wanted: Wanted, label: str, findings: tuple[Finding, ...]
 ) -> RawTable:
     def column(name: str) -> pa.ChunkedArray:
         return table.column(str(dress.names.index(name)))
@@ -214,7 +208,7 @@ def _raw_table(
     )
 
 
-def _line_of_row(path: Path, dress: Dress, row: int) -> int:
+def _line_of_row(path: Place, dress: Dress, row: int) -> int:
     """Count lines up to a row; slow, but asked for only when something is wrong there."""
     with open_text(path, dress.encoding) as file:
         rows = csv.reader(itertools.islice(file, dress.lines_before, None), delimiter=dress.delimiter)

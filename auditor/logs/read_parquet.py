@@ -9,15 +9,16 @@ import pyarrow.compute as pc
 import pyarrow.parquet
 
 from auditor.errors import LogError, Problem, raise_all
+from auditor.logs.packed import UNREADABLE, Place, is_packed, open_bytes
 from auditor.logs.raw_table import RawTable, Wanted, column_problems, time_columns
 
 
-def read_parquet(path: Path, label: str, wanted: Wanted) -> RawTable:
+def read_parquet(path: Place, label: str, wanted: Wanted) -> RawTable:
     """Read the wanted columns of a Parquet file.
 
     Parameters
     ----------
-    path : Path
+    path : Path or Member
     label : str
         What the file is called in errors.
     wanted : Wanted
@@ -30,12 +31,12 @@ def read_parquet(path: Path, label: str, wanted: Wanted) -> RawTable:
         values are needed.
     """
     try:
-        with pa.parquet.ParquetFile(path) as file:
+        with pa.parquet.ParquetFile(_source(path), read_dictionary=wanted.coded()) as file:
             names = list(file.schema_arrow.names)
             raise_all(LogError, column_problems(wanted, names, label))
             table = file.read(columns=wanted.columns(names))
             _check_letters(table)
-    except (pa.ArrowException, OSError) as error:
+    except (pa.ArrowException, *UNREADABLE) as error:
         found = str(error).splitlines()[0]
         raise LogError(
             Problem(what="The Parquet file is damaged.", where=label, found=found, do="write it again")
@@ -45,7 +46,15 @@ def read_parquet(path: Path, label: str, wanted: Wanted) -> RawTable:
         raise LogError(
             Problem(what="The log holds no rows.", where=label, found=found, do="export it again, or leave it out")
         )
-    return _raw_table(_single_values(table, label), wanted, label)
+    return _raw_table(_single_values(table, wanted, label), wanted, label)
+
+
+def _source(path: Place) -> Path | pa.BufferReader:
+    """Return what to read from: columns are picked out of a file, a packed one has to be unpacked as a whole."""
+    if isinstance(path, Path) and not is_packed(path):
+        return path
+    with open_bytes(path) as file:
+        return pa.BufferReader(file.read())
 
 
 def _check_letters(table: pa.Table) -> None:
@@ -55,11 +64,11 @@ def _check_letters(table: pa.Table) -> None:
             column.validate(full=True)
 
 
-def _single_values(table: pa.Table, label: str) -> pa.Table:
-    """Undo dictionaries, and refuse columns whose cells are no single values."""
+def _single_values(table: pa.Table, wanted: Wanted, label: str) -> pa.Table:
+    """Undo dictionaries of numbers, times and modes, and refuse columns whose cells are no single values."""
     problems = []
     for place, field in enumerate(table.schema):
-        if pa.types.is_dictionary(field.type):
+        if pa.types.is_dictionary(field.type) and field.name not in wanted.coded():
             table = table.set_column(place, field.name, pc.cast(table.column(place), field.type.value_type))
         elif pa.types.is_nested(field.type):
             what = f'Column "{field.name}" does not hold single values.'

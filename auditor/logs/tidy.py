@@ -82,12 +82,7 @@ def _without(table: RawTable, stamps: Stamps, rows: IntArray, findings: Sequence
     keep = np.ones(len(table), dtype=np.bool_)
     keep[rows] = False
     short = replace(table.keep(keep), findings=(*table.findings, *findings))
-    return short, Stamps(
-        nanoseconds=stamps.nanoseconds[keep],
-        local=stamps.local[keep],
-        state=stamps.state[keep],
-        leap=stamps.leap[keep],
-    )
+    return short, stamps.keep(keep)
 
 
 def _no_time(table: RawTable, rows: IntArray, stamps: Stamps, source: LogSource) -> Problem:

@@ -55,6 +55,12 @@ class Stamps:
     state: npt.NDArray[np.uint8]
     leap: BoolArray
 
+    def keep(self, rows: BoolArray) -> Stamps:
+        """Return the stamps of some rows."""
+        return Stamps(
+            nanoseconds=self.nanoseconds[rows], local=self.local[rows], state=self.state[rows], leap=self.leap[rows]
+        )
+
 
 def read_stamps(tables: Sequence[RawTable], source: LogSource) -> tuple[Stamps, ...]:
     """Read the time column(s) of all files of a log.

@@ -10,9 +10,11 @@ from auditor.loopfile.gains import actuator_span
 from auditor.loopfile.lines import KeyPath
 from auditor.loopfile.schema import (
     ActuatorTable,
+    ChannelTable,
     ControllerTable,
     LimitsTable,
     LogTable,
+    ModeTable,
     SetpointTable,
     SignalsTable,
     SignalTable,
@@ -65,7 +67,7 @@ def _check_setpoint(setpoint: SetpointTable, measurement: SignalTable) -> Iterat
         found = "neither" if setpoint.column is None else "both"
         do = 'write { column = "…" } for a logged setpoint or { value = 2.0 } for a constant one'
         yield _fault(at, "needs a column or a value", found, "one of column and value", do)
-    for key in ("scale", "offset", "range", "resolution", "stored"):
+    for key in ("scale", "offset", "range", "resolution", "stored", "time"):
         if setpoint.value is not None and key in setpoint.model_fields_set:
             do = f"state the value as the loop uses it and remove {key}"
             yield _fault((*at, key), "does not go with a constant setpoint", key, "value and unit only", do)
@@ -101,6 +103,21 @@ def _ordered(at: KeyPath, low: float, high: float, *reads: KeyPath) -> Iterator[
     if not low < high:
         found = f"low {low:g}, high {high:g}"
         yield _fault(at, "is upside down", found, "low below high", "correct them", *reads)
+
+
+def check_clocks(log: LogTable, signals: SignalsTable) -> Iterator[Fault]:
+    """Check that a signal has a time column of its own in the wide layout only: each tag of a long log has its rows."""
+    tables: list[tuple[KeyPath, SignalTable | SetpointTable | ModeTable | None]] = [
+        (("signals", "measurement"), signals.measurement),
+        (("signals", "setpoint"), signals.setpoint),
+        (("signals", "actuator"), signals.actuator),
+        (("signals", "mode"), signals.mode),
+        *((("signals", "disturbances", n), signal) for n, signal in enumerate(signals.disturbances)),
+    ]
+    for at, table in tables:
+        if log.layout == "long" and table is not None and table.time is not None:
+            expected = "the times of its tag's rows"
+            yield _fault((*at, "time"), "is for the wide layout only", as_written(table.time), expected, "remove it")
 
 
 def check_controller(controller: ControllerTable, actuator: ActuatorTable | None) -> Iterator[Fault]:
@@ -172,6 +189,13 @@ def _check_integral(controller: ControllerTable) -> Iterator[Fault]:
     if controller.bias is not None and (ti != "none" or repeats is not None):
         do, expected = 'remove bias, or write integral_time = "none"', "bias only without integral action"
         yield _odd("bias", "has no use here", f"{controller.bias:g}", expected, do, "integral_time")
+
+
+def check_channel(channel: ChannelTable) -> Iterator[Fault]:
+    """Check `[channel]`: a duty cycle is a share of time, which needs the time of one message."""
+    if channel.duty_cycle is not None and channel.airtime is None:
+        at, do = ("channel", "duty_cycle"), "add airtime, the time one message takes, or remove duty_cycle"
+        yield _fault(at, "needs the airtime", "no airtime", 'airtime, such as "4ms"', do, ("channel", "airtime"))
 
 
 def check_limits(limits: LimitsTable, signals: SignalsTable | None) -> Iterator[Fault]:

@@ -36,6 +36,7 @@ from auditor.loopfile.schema import (
     LimitsTable,
     LogTable,
     LoopTable,
+    ModeTable,
     SetpointTable,
     SignalsTable,
     SignalTable,
@@ -125,8 +126,12 @@ def _signals(signals: SignalsTable) -> Signals:
         setpoint=Signal(**_signal(signals.setpoint)),
         actuator=_actuator(signals.actuator),
         disturbances=tuple(Signal(**_signal(signal)) for signal in signals.disturbances),
-        mode=Mode(column=signals.mode.column, automatic=tuple(signals.mode.automatic)) if signals.mode else None,
+        mode=_mode(signals.mode) if signals.mode else None,
     )
+
+
+def _mode(mode: ModeTable) -> Mode:
+    return Mode(column=mode.column, automatic=tuple(mode.automatic), time=mode.time)
 
 
 def _signal(signal: SignalTable | SetpointTable) -> dict[str, Any]:

@@ -14,9 +14,7 @@ from pydantic_core import ErrorDetails
 
 from auditor.errors import Problem
 from auditor.loopfile.lines import KeyPath
-from auditor.text import nearest
-
-FILL_IN = "# FILL IN"
+from auditor.text import FILL_IN, nearest
 
 _EXPECTED: Mapping[str, str] = MappingProxyType(
     {

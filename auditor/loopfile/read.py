@@ -14,7 +14,15 @@ from pydantic import ValidationError
 from auditor.errors import LoopFileError, Problem, raise_all
 from auditor.loop import Loop, RuleRequest
 from auditor.loopfile import faults as fault_room
-from auditor.loopfile.checks import check_controller, check_limits, check_log, check_signals, unsupported
+from auditor.loopfile.checks import (
+    check_channel,
+    check_clocks,
+    check_controller,
+    check_limits,
+    check_log,
+    check_signals,
+    unsupported,
+)
 from auditor.loopfile.convert import Tables, check_exclusions, to_loop
 from auditor.loopfile.faults import Fault
 from auditor.loopfile.gains import gains_in_words
@@ -211,10 +219,14 @@ def _between_keys(found: Mapping[str, Any]) -> Iterator[Fault]:
         yield from check_exclusions(log)
     if signals is not None:
         yield from check_signals(signals)
+    if log is not None and signals is not None:
+        yield from check_clocks(log, signals)
     if controller is not None:
         yield from check_controller(controller, signals.actuator if signals else None)
     if limits is not None:
         yield from check_limits(limits, signals)
+    if found.get("channel") is not None:
+        yield from check_channel(found["channel"])
 
 
 def _raise(faults: list[Fault], source: _Source) -> None:

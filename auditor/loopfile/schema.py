@@ -87,6 +87,7 @@ class SignalBase(Table):
     range: Range | None = None
     resolution: Positive | None = None
     stored: Literal["every", "on-change", "interpolated"] | None = None
+    time: Text | None = None
 
 
 class SignalTable(SignalBase):
@@ -117,6 +118,7 @@ class ModeTable(Table):
     automatic: Annotated[Codes, Field(min_length=1)] = Field(
         description="the values that mean automatic operation", examples=['["AUTO"]']
     )
+    time: Text | None = None
 
 
 class SignalsTable(Table):

@@ -11,16 +11,13 @@ import numpy.typing as npt
 from auditor.arrays import FloatArray, IntArray
 from auditor.errors import Problem, RuleError
 from auditor.identify.plant import Plant
-from auditor.kernels import rows as R
+from auditor.identify.thresholds import DIVERGED
 from auditor.kernels.replay import replay_span
 from auditor.replay.bench import Bench, form_array
 from auditor.replay.types import Series, Setting
 from auditor.rules import Rule, get_rule
 
 NEVER = np.iinfo(np.int64).max // 4
-
-DIVERGED = 1e6
-"""|y| beyond this many deviations of the error is "the loop would not have been stable", not a number (method, §8)."""
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -129,12 +126,9 @@ def unit_response(plant: Plant, samples: int) -> float:
 
 
 def diverged(lanes: Lanes, bench: Bench) -> npt.NDArray[np.bool_]:
-    """True for lanes whose loop would not have been stable, shape (lanes,)."""
+    """True for lanes whose loop would not have been stable (beyond `DIVERGED`, or no number), shape (lanes,)."""
     record = bench.record
     scale = DIVERGED * max(record.error_deviation, np.finfo(float).tiny)
     inside = record.in_span
     away = np.abs(lanes.y[inside] - record.y[inside, None])
     return np.asarray(~np.all(away < scale, axis=0))
-
-
-__all__ = ["NEVER", "Lanes", "R", "diverged", "guards", "replay_lanes", "unit_response"]

@@ -88,7 +88,7 @@ class Replay:
     refusal : str or None
         Why the log cannot answer this setting, with the number that failed.
     trust : str
-        "good", "limited" or "none", from the width of the answer's own interval.
+        "good", "limited" or "none", from the width of the answer's own interval; in an audit never above the model's.
     naive_updates, naive_rms_error : float
         The same with the model left out (G = 0).
     against_periodic : str

@@ -12,9 +12,10 @@ import pandas as pd
 from auditor.audit import Audit
 from auditor.loop import Loop
 from auditor.replay import Replay, Setting
-from auditor.report.as_json import INTERVALS, MEASURES, finite, flag_object, replay_object
+from auditor.report.as_json import MEASURES, finite, flag_object, replay_object
 from auditor.report.content import FlagCount, flag_counts
 from auditor.report.phrases import settings_text
+from auditor.sweep import INTERVALS
 
 _STARTS_A_FORMULA = ("=", "+", "-", "@", "\t", "\r")
 _PLAIN = (

@@ -12,18 +12,19 @@ import numpy as np
 
 from auditor.audit import Audit
 from auditor.controllers.pid import Pid
-from auditor.dangers.interval import Flag, covered_samples
+from auditor.dangers.interval import Flag
 from auditor.identify.plant import Model, Plant
 from auditor.logs.findings.base import Finding
 from auditor.logs.record import Record, Span
+from auditor.objections import accepted_rms_error
 from auditor.replay import Measures, Replay
-from auditor.report.content import FlagCount, accepted_rms_error, flag_counts
+from auditor.report.content import FlagCount, count_flags, flag_counts
 from auditor.report.parameters import lag_intervals, parameter_interval
 from auditor.report.times import utc
+from auditor.sweep import INTERVALS
 
 FORMAT, VERSION = "auditor/audit", 1
 MEASURES = tuple(field.name for field in fields(Measures))
-INTERVALS = ("updates", "rms_error", "iae_per_hour", "max_abs_error")
 
 Json = dict[str, Any]
 
@@ -62,11 +63,7 @@ def log_json(record: Record) -> str:
 
 def replay_json(replay: Replay, flags: Sequence[Flag], record: Record) -> str:
     """Write one replay with its flags."""
-    count = FlagCount(
-        watch=sum(f.severity == "watch" for f in flags),
-        danger=sum(f.severity == "danger" for f in flags),
-        flagged_s=covered_samples(flags) * record.period,
-    )
+    count = count_flags(flags, record.period)
     return _text({"replay": replay_object(replay, count), "flags": [flag_object(f, record) for f in flags]})
 
 
@@ -154,7 +151,7 @@ def _loop(audit: Audit) -> Json:
             "safety": limits.safety,
         },
         "accept": {
-            "max_rms_error": accepted_rms_error(audit),
+            "max_rms_error": accepted_rms_error(loop, audit.baseline),
             "max_rms_error_assumed": accept.max_rms_error is None,
             "min_saved_fraction": accept.min_saved_fraction,
             "min_hours": accept.min_hours,

@@ -2,18 +2,16 @@
 
 from __future__ import annotations
 
-from collections import Counter
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
-from auditor.audit import Audit
-from auditor.dangers.interval import Flag
+from auditor.audit import SHOWN_DANGERS, Audit
+from auditor.dangers.interval import Flag, covered_samples
+from auditor.objections import accepted_rms_error
 from auditor.replay import Measures, Replay
-from auditor.verdict import RMS_MARGIN
 
-SHOWN_DANGERS = 12
 SHOWN_FLAGS = 60
 
 
@@ -107,16 +105,9 @@ def gather(audit: Audit) -> Content:
         flags=tuple(flags[:SHOWN_FLAGS]),
         flags_left_out=max(0, len(flags) - SHOWN_FLAGS),
         counts=counts,
-        max_rms_error=accepted_rms_error(audit),
+        max_rms_error=accepted_rms_error(audit.loop, audit.baseline),
         rms_assumed=audit.loop.accept.max_rms_error is None,
     )
-
-
-def accepted_rms_error(audit: Audit) -> float | None:
-    """Largest RMS error the decision accepts: as stated, else `RMS_MARGIN` times the record's own."""
-    if audit.loop.accept.max_rms_error is not None:
-        return audit.loop.accept.max_rms_error
-    return None if audit.baseline is None else RMS_MARGIN * audit.baseline.rms_error
 
 
 def is_recommended(audit: Audit) -> bool:
@@ -137,22 +128,22 @@ def flag_counts(audit: Audit) -> tuple[FlagCount, ...]:
     by_replay: dict[int, list[Flag]] = {}
     for flag in audit.flags:
         by_replay.setdefault(flag.replay, []).append(flag)
-    return tuple(_count(by_replay.get(i, []), audit.record.period) for i in range(len(audit.replays)))
+    return tuple(count_flags(by_replay.get(i, []), audit.record.period) for i in range(len(audit.replays)))
+
+
+def count_flags(flags: Sequence[Flag], period: float) -> FlagCount:
+    """Count the flags of one replay by severity; `period` is the base period [s]."""
+    return FlagCount(
+        watch=sum(flag.severity == "watch" for flag in flags),
+        danger=sum(flag.severity == "danger" for flag in flags),
+        flagged_s=covered_samples(flags) * period,
+    )
 
 
 def curve_key(replay: Replay) -> tuple[str, str, str, str]:
     """What makes replays one curve of the trade-off picture."""
     setting = replay.setting
     return setting.rule, setting.link, setting.signal, setting.between
-
-
-def _count(flags: Sequence[Flag], period: float) -> FlagCount:
-    severities = Counter(flag.severity for flag in flags)
-    covered, reached = 0, -1
-    for start, stop in sorted((flag.start, flag.stop) for flag in flags):
-        covered += max(0, stop - max(start, reached))
-        reached = max(reached, stop)
-    return FlagCount(watch=severities["watch"], danger=severities["danger"], flagged_s=covered * period)
 
 
 def _weight(flag: Flag, focus: int | None) -> tuple[bool, bool, float, int]:
@@ -171,7 +162,7 @@ def upper_rms_error(replay: Replay) -> float:
 
 def _best(audit: Audit, candidates: Iterable[int]) -> int | None:
     """Most saved within the accepted error; when none is within it, the smallest error that saves enough."""
-    limit = accepted_rms_error(audit) or np.inf
+    limit = accepted_rms_error(audit.loop, audit.baseline) or np.inf
     wanted = audit.loop.accept.min_saved_fraction
 
     def rank(i: int) -> tuple[bool, bool, float]:

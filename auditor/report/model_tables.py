@@ -6,6 +6,8 @@ import math
 
 from auditor.controllers.pid import Pid
 from auditor.identify.plant import Model
+from auditor.loop import Accept
+from auditor.objections import RMS_MARGIN
 from auditor.report.content import Content
 from auditor.report.parameters import lag_intervals, parameter_interval
 from auditor.report.phrases import clean, measured, whole
@@ -23,7 +25,8 @@ def conditions_table(content: Content) -> Table:
             return "–", "not stated: never guessed from the log"
         return with_unit(number(value), unit), "stated in the loop file"
 
-    rms = "assumed: 1.25 times the record's" if content.rms_assumed else "stated in the loop file"
+    usual = Accept()
+    rms = f"assumed: {RMS_MARGIN:g} times the record's" if content.rms_assumed else "stated in the loop file"
     rows = [
         ("low limit of the process", *stated(limits.low)),
         ("high limit of the process", *stated(limits.high)),
@@ -31,8 +34,16 @@ def conditions_table(content: Content) -> Table:
         ("longest acceptable silence", seconds(limits.max_silence), stated(limits.max_silence)[1]),
         ("safety function", "yes: never recommended for switching" if limits.safety else "no", "as the loop file says"),
         ("largest RMS error accepted", with_unit(number(content.max_rms_error), unit), rms),
-        ("smallest saving wanted", percent(accept.min_saved_fraction), "loop file, or its default of 30 %"),
-        ("fewest hours wanted", with_unit(f"{accept.min_hours:g}", "h"), "loop file, or its default of 48 h"),
+        (
+            "smallest saving wanted",
+            percent(accept.min_saved_fraction),
+            f"loop file, or its default of {percent(usual.min_saved_fraction)}",
+        ),
+        (
+            "fewest hours wanted",
+            with_unit(f"{accept.min_hours:g}", "h"),
+            f"loop file, or its default of {usual.min_hours:g} h",
+        ),
     ]
     return plain_table(("condition", "value", "where it comes from"), rows, numeric=(1,))
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 import unicodedata
 
+from auditor.dangers import DETECTORS
 from auditor.loop import Loop
 from auditor.replay import Setting
 from auditor.rules import RULES
@@ -16,19 +17,7 @@ DECISIONS = {
     "undecided": "Undecided: this log does not settle the question.",
 }
 
-CAUSES = {
-    "limit": "outside the process limits",
-    "band": "outside the band for too long",
-    "silence": "too long without an update",
-    "burst": "more updates than the link should carry",
-    "saturation": "actuator at a limit",
-    "rate": "actuator at its slew limit",
-    "swing": "sustained oscillation",
-    "growth": "drifting away from what was recorded",
-    "outside-model": "outside the range the model was identified on",
-    "fragile": "one lost update would leave the limits",
-    "blind": "unusable data inside the horizon",
-}
+CAUSES = {detector.CAUSE: detector.MEANING for detector in DETECTORS}
 
 _WORDS = {"max_silence_s": "longest silence", "min_gap_s": "shortest gap", "every": "every"}
 

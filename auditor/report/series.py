@@ -53,13 +53,21 @@ def series_bytes(record: Record, series: Series, suffix: str) -> bytes:
     OutputError
         Another suffix is asked for.
     """
+    check_suffix(suffix)
     if suffix == ".parquet":
         return series_parquet(record, series)
-    if suffix == ".csv":
-        text: str = series_frame(record, series).to_csv(index=False, date_format="%Y-%m-%dT%H:%M:%S.%fZ")
-        return text.encode("utf-8")
-    raise OutputError(
-        Problem(
-            what="the series cannot be written in that format", found=suffix or "no suffix", expected=".csv or .parquet"
-        )
-    )
+    text: str = series_frame(record, series).to_csv(index=False, date_format="%Y-%m-%dT%H:%M:%S.%fZ")
+    return text.encode("utf-8")
+
+
+def check_suffix(suffix: str) -> None:
+    """Say whether signals can be written with this suffix before anything is computed for them.
+
+    Raises
+    ------
+    OutputError
+        It is neither `.csv` nor `.parquet`.
+    """
+    if suffix not in (".csv", ".parquet"):
+        what = "the series cannot be written in that format"
+        raise OutputError(Problem(what=what, found=suffix or "no suffix", expected=".csv or .parquet"))

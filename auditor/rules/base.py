@@ -36,7 +36,8 @@ class SettingSpec:
     name : str
         As in loop files; a duration ends in `_s`.
     unit : str
-        "measurement", "measurement·s", "s", "samples" or "" — the watched signal's unit stands for "measurement".
+        "measurement", "measurement·s", "command", "s", "samples" or ""; what the rule watches on its link stands for
+        "measurement".
     meaning : str
     default : float or None
         None: must be given.

@@ -40,7 +40,7 @@ def test_help_is_light() -> None:
     assert "audit" in done.stdout
 
 
-@pytest.mark.parametrize("command", ["demo", "draft", "check", "identify", "replay", "audit", "rules"])
+@pytest.mark.parametrize("command", ["demo", "draft", "check", "identify", "replay", "audit", "rules", "disguise"])
 def test_every_command_has_help(command: str, capsys: pytest.CaptureFixture[str]) -> None:
     assert run([command, "--help"]) == 0
     assert "Usage" in capsys.readouterr().out
@@ -99,6 +99,7 @@ def test_check_prints_what_was_found(loopfile: Path, capsys: pytest.CaptureFixtu
     shown = capsys.readouterr().out
     assert "6,000 rows" in shown
     assert "smallest threshold" in shown
+    assert "Ideal form: gain 150.0 %/m, integral time 50 min" in shown
 
 
 def test_check_as_json_is_json_alone(loopfile: Path, capsys: pytest.CaptureFixture[str]) -> None:
@@ -118,6 +119,21 @@ def test_replay_with_a_saved_model(loopfile: Path, modelfile: Path, tmp_path: Pa
     assert series.read_text().startswith("time,setpoint,measurement,actuator,replayed_measurement")
 
 
+@pytest.mark.parametrize(
+    "arguments",
+    [
+        ["replay", "--rule", "send-on-delta", "--set", "delta=0.01", "--series", "x.txt"],
+        ["identify", "--plot", "x.txt"],
+    ],
+    ids=["series", "plot"],
+)
+def test_an_unknown_suffix_is_three_before_anything_is_computed(loopfile: Path, arguments: list[str], capsys) -> None:
+    assert run([arguments[0], str(loopfile), *arguments[1:]]) == 3
+    told = capsys.readouterr().err
+    assert ".txt" in told
+    assert "identify" not in told
+
+
 def test_unknown_rule_is_three_before_anything_is_computed(loopfile: Path, capsys: pytest.CaptureFixture[str]) -> None:
     assert run(["replay", str(loopfile), "--rule", "send-on-dleta", "--set", "delta=0.01"]) == 3
     told = capsys.readouterr().err
@@ -127,13 +143,14 @@ def test_unknown_rule_is_three_before_anything_is_computed(loopfile: Path, capsy
 
 def test_audit_writes_its_files_and_prints_the_decision(loopfile: Path, modelfile: Path, tmp_path, capsys) -> None:
     out = tmp_path / "out"
-    assert run(["audit", str(loopfile), "--model", str(modelfile), "--out", str(out), "--quick"]) == 0
+    assert run(["audit", str(loopfile), "--model", str(modelfile), "--out", str(out), "--quick", "--seed", "7"]) == 0
     captured = capsys.readouterr()
     assert any(word in captured.out for word in ("SWITCH", "KEEP", "UNDECIDED"))
     assert all(len(line) <= 100 for line in captured.out.splitlines()[:-1])
     for name in ("report.html", "audit.json", "model.json", "replays.csv", "flags.csv"):
         assert (out / name).stat().st_size > 0
     assert not list(out.rglob(".*"))
+    # The model was identified with seed 1, and nothing else is drawn.
     assert json.loads((out / "audit.json").read_text())["provenance"]["seed"] == 1
 
 

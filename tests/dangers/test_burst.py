@@ -38,6 +38,24 @@ def test_no_room_at_all_makes_every_update_too_much() -> None:
     assert (*where(flag), flag.values["budget"]) == (100, 101, "danger", -3.0)
 
 
+@pytest.mark.parametrize(
+    ("limits", "budget"),
+    [
+        # A window of 600 s holds eight messages of 75 s, of which three are others'; a third of it holds two and 2/3.
+        ({"airtime": 75.0, "other_traffic": 3}, 5.0),
+        ({"airtime": 75.0, "other_traffic": 3, "duty_cycle": 1 / 3}, 8 / 3),
+        ({"airtime": 1.0, "other_traffic": 3}, 7.0),
+    ],
+    ids=["airtime", "duty cycle", "count"],
+)
+def test_time_on_the_air_bounds_the_budget_as_well(limits: dict[str, float], budget: float) -> None:
+    channel = {"channel": Channel(window=600.0, max_messages=10, **limits)}
+    allowed = int(budget)
+    assert crowded(*range(100, 100 + allowed), loop_changes=channel).flags(burst) == ()
+    flag = crowded(*range(100, 101 + allowed), loop_changes=channel).only_flag(burst)
+    assert flag.values["budget"] == pytest.approx(budget)
+
+
 def test_a_window_that_holds_fewer_samples_than_the_budget_cannot_overflow() -> None:
     channel = {"channel": Channel(window=240.0, max_messages=4)}
     bench = crowded(loop_changes=channel, rule="periodic")

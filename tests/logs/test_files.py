@@ -93,7 +93,7 @@ def write_stranger(path: Path, what: str) -> None:
     elif what == "ods":
         zipped(path, {"mimetype": "application/vnd.oasis.opendocument.spreadsheet"})
     elif what == "zip":
-        zipped(path, {"log.csv": TEXT})
+        zipped(path, {"log.bin": "1", "log.idx": "2"})
     elif what == "sqlite":
         with sqlite3.connect(path) as database:
             database.execute("create table log (time text)")

@@ -106,6 +106,32 @@ def saturated():
     return pool_log(gate=np.minimum(gate, high)), loop
 
 
+def with_change(change: Callable[[np.ndarray], None]) -> tuple:
+    """Return the clean log with its level changed in place."""
+    level = pool_channels(ROWS)["level"]
+    change(level)
+    return pool_log(level=level), pool_loop()
+
+
+def with_resets():
+    return with_change(lambda level: level.__setitem__([300, 301, 302, 303, 800], 1.2))
+
+
+def as_an_angle():
+    return pool_log(level=(3.0 * np.arange(ROWS) + pool_channels(ROWS)["level"]) % 360.0), pool_loop()
+
+
+def in_centimetres():
+    return with_change(lambda level: level.__setitem__(slice(1100, None), 100 * level[1100:]))
+
+
+def with_ramp():
+    target = np.full(ROWS, 2.0)
+    target[500:550] = 2.0 + 0.004 * np.arange(1, 51)
+    target[550:] = 2.2
+    return pool_log(target=target), pool_loop()
+
+
 CASES: dict[str, tuple[Callable[[], tuple], dict]] = {
     "coverage": (lambda: (pool_log(), pool_loop()), {"count": ROWS, "start": START}),
     "stray-stamp": (lambda: shifted(slice(ROWS - 1, ROWS), 10**18), {"count": 1}),
@@ -119,6 +145,10 @@ CASES: dict[str, tuple[Callable[[], tuple], dict]] = {
     "jitter": (with_jitter, {}),
     "coarse-log": (lambda: (pool_log(period=300.0), pool_loop()), {"count": ROWS, "weight": "limits the answer"}),
     "fine-log": (lambda: (pool_log(period=20.0), pool_loop()), {}),
+    "mixed-period": (
+        lambda: (with_rows(pool_log(), np.r_[0:1203, 1203:ROWS:3]), pool_loop()),
+        {"count": 1, "start": START + 1203 * MINUTE, "weight": "limits the answer"},
+    ),
     "gap": (
         lambda: (with_rows(pool_log(), np.r_[0:500, 510:800, 801:ROWS]), pool_loop()),
         {"count": 2, "start": START + 500 * MINUTE, "end": START + 800 * MINUTE},
@@ -133,7 +163,21 @@ CASES: dict[str, tuple[Callable[[], tuple], dict]] = {
         lambda: (spoiled("level", [5, 6], 2.9)[0], pool_loop(measurement=Signal(column="level", low=0, high=2.8))),
         {"count": 2, "signal": "level", "start": START + 5 * MINUTE},
     ),
+    "spike": (
+        lambda: spoiled("level", [400, 900, 1500], [2.4, 1.7, 2.4]),
+        {"count": 3, "start": START + 400 * MINUTE, "end": START + 1500 * MINUTE, "weight": "limits the answer"},
+    ),
+    "sensor-reset": (
+        with_resets,
+        {"count": 1, "start": START + 300 * MINUTE, "end": START + 303 * MINUTE, "signal": "level"},
+    ),
+    "range-wrap": (as_an_angle, {"count": 16, "start": START + 120 * MINUTE, "signal": "level"}),
+    "unit-change": (in_centimetres, {"count": 1, "start": START + 1100 * MINUTE, "signal": "level"}),
     "stuck": (lambda: spoiled("level", slice(1000, 1100), 2.03), {"count": 1, "start": START + 1000 * MINUTE}),
+    "stale-hold": (
+        lambda: spoiled("level", slice(1000, 1008), 2.03),
+        {"count": 1, "start": START + 1000 * MINUTE, "end": START + 1007 * MINUTE, "signal": "level"},
+    ),
     "interpolated": (with_interpolation, {"signal": "level"}),
     "exception-reported": (
         lambda: (pool_log(level=send_on_delta(pool_channels(ROWS)["level"], 0.02)), pool_loop()),
@@ -142,6 +186,10 @@ CASES: dict[str, tuple[Callable[[], tuple], dict]] = {
     "quantised": (
         lambda: (pool_log(level=np.round(pool_channels(ROWS)["level"], 2)), pool_loop()),
         {"signal": "level"},
+    ),
+    "setpoint-ramp": (
+        with_ramp,
+        {"count": 1, "start": START + 500 * MINUTE, "end": START + 549 * MINUTE, "signal": "target"},
     ),
     "saturation": (saturated, {"signal": "gate", "count": 200}),
     "constant-actuator": (lambda: spoiled("gate", slice(None), 40.0), {"count": ROWS, "weight": "stops the answer"}),
@@ -355,6 +403,11 @@ def test_numbers_for_no_value_are_found_and_excursions_are_not():
     expected = [3, 70, 900, 901, 902]
     np.testing.assert_array_equal(np.flatnonzero(sentinel_mask(values, True)), expected)
     np.testing.assert_array_equal(np.flatnonzero(sentinel_mask(values, False)), [3, 70])
+    values[[3, 70]] = np.float64(np.float32(-273.2))
+    assert sentinel_mask(values, False)[[3, 70]].all(), "through single precision"
+    held = np.repeat(np.random.default_rng(1).laplace(20.0, 0.02, 600), 6)
+    held[1800:1806] = 21.0
+    assert not sentinel_mask(held, True).any(), "one excursion of a signal that repeats every value"
     assert not sentinel_mask(np.where(np.arange(100) < 90, 0.0, 1.0), False).any(), "a switch that is mostly off"
     assert not sentinel_mask(np.full(50, np.nan), True).any()
     assert not sentinel_mask(np.random.default_rng(0).normal(999, 1, 1000).round(), True).any(), "a usual 999"

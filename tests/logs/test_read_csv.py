@@ -322,7 +322,7 @@ def test_a_log_without_usable_rows_is_refused(tmp_path: Path, text: str, what: s
         ({"encoding": "base64"}, "[log] encoding"),
         ({"delimiter": "::"}, "[log] delimiter"),
         ({"decimal": "'"}, "[log] decimal"),
-        ({"layout": "long"}, "[log] layout"),
+        ({"layout": "tall"}, "[log] layout"),
     ],
 )
 def test_a_statement_that_is_none_is_refused(tmp_path: Path, stated: dict[str, str], where: str) -> None:

@@ -195,7 +195,7 @@ def make_flags(replays: tuple[Replay, ...], record: Record, focus: int) -> tuple
             share = 0.9 if stop - start > 10 else 0.3
             detail = f"level {np.abs(one.series.y[start:stop] - 2).max() + 2:.2f} m against 1.88 … 2.14 m"
             flags.append(_flag(i, int(start), int(stop), "limit", share, detail))
-    for n, cause in enumerate(("band", "silence", "swing", "outside-model", "fragile")):
+    for n, cause in enumerate(("band", "silence", "rate", "outside-model", "growth")):
         for k in range(n + 1):
             start = 1_500 + 3_100 * k + 700 * n
             flags.append(

@@ -48,7 +48,7 @@ def _leading(trace: Trace, missing: int) -> str:
 
 def _sparse(trace: Trace, seen: Evidence) -> Finding | None:
     """Report an actuator or measurement with numbers in a minority of the rows."""
-    rows = trace.state >= EMPTY
+    rows = np.logical_or.reduce([other.state >= EMPTY for other in seen.recorded_traces])
     share = float(np.mean(trace.state[rows] == USABLE)) if rows.any() else 1.0
     if share >= _SPARSE or not np.isfinite(trace.values).any():
         return None

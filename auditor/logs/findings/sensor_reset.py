@@ -6,7 +6,7 @@ import numpy as np
 
 from auditor.logs.findings.base import Finding
 from auditor.logs.findings.evidence import Evidence
-from auditor.logs.findings.series import excursions_of
+from auditor.logs.findings.jumps import excursions_of
 from auditor.logs.findings.wording import moment, plural
 from auditor.text import percent
 

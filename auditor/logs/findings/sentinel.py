@@ -7,6 +7,7 @@ import numpy as np
 from auditor.arrays import BoolArray, FloatArray
 from auditor.logs.findings.base import Finding
 from auditor.logs.findings.evidence import Evidence
+from auditor.logs.findings.series import usual_run
 from auditor.logs.findings.wording import moment, plural
 from auditor.logs.runs import thinned
 from auditor.text import percent
@@ -20,6 +21,7 @@ CUSTOMARY: frozenset[float] = frozenset(
 
 _FAR = 20.0
 _REPEATS = 3
+_SINGLE = 1e-7
 _PARTS_OF_LEVEL = 1e-3
 _QUARTILES_PER_DEVIATION = 1.349
 
@@ -28,7 +30,8 @@ def sentinel_mask(values: FloatArray, any_number: bool) -> BoolArray:
     """Return True where a raw value stands for "no value".
 
     A number is taken for one when it is further than 20 robust deviations from the median and from every other
-    number of the signal, and either customary or, where `any_number` is allowed, the same at least three times.
+    number of the signal, and either customary or, where `any_number` is allowed, the same at least three times (as
+    often as three usual runs of one value, where a rounded or held signal repeats its values anyway).
 
     Parameters
     ----------
@@ -47,10 +50,19 @@ def sentinel_mask(values: FloatArray, any_number: bool) -> BoolArray:
     far = np.flatnonzero((values < low) | (values > high))
     levels, counts = np.unique(values[far], return_counts=True)
     apart = _apart(levels, centre, _FAR * deviation)
-    repeated = (counts >= _REPEATS) if any_number and quartiles > 0 else np.zeros(len(levels), np.bool_)
-    chosen = levels[apart & (np.isin(levels, list(CUSTOMARY)) | repeated)]
+    repeated = np.zeros(len(levels), dtype=np.bool_)
+    if any_number and quartiles > 0:
+        repeated = counts >= _REPEATS * usual_run(values)
+    chosen = levels[apart & (_customary(levels) | repeated)]
     mask[far] = np.isin(values[far], chosen)
     return mask
+
+
+def _customary(levels: FloatArray) -> BoolArray:
+    """Return True for the customary numbers, also where they went through single precision (−273.20001)."""
+    known = np.array(sorted(CUSTOMARY))
+    nearest = known[np.argmin(np.abs(levels[:, None] - known), axis=1)]
+    return np.asarray(np.abs(levels - nearest) <= _SINGLE * np.abs(nearest))
 
 
 def _scale(values: FloatArray) -> tuple[float, float]:

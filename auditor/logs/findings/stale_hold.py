@@ -7,11 +7,11 @@ import numpy as np
 from auditor.arrays import BoolArray, FloatArray, IntArray
 from auditor.logs.findings.base import Finding
 from auditor.logs.findings.evidence import Evidence, Trace
-from auditor.logs.findings.series import as_stored, at_rest, excursions_of, runs_of_one_value
+from auditor.logs.findings.jumps import excursions_of
+from auditor.logs.findings.series import as_stored, at_rest, runs_of_one_value, usual_run
 from auditor.logs.findings.wording import moment, plural
 from auditor.text import duration, percent
 
-_LONGEST_USUAL = 0.99
 _SHORTEST = 4
 _TIMES_USUAL = 5
 _STUCK = 20
@@ -35,7 +35,7 @@ def stale_runs(values: FloatArray) -> tuple[IntArray, IntArray]:
     starts, lengths = runs_of_one_value(values)
     if len(starts) < _FEWEST_RUNS:
         return starts[:0], starts[:0]
-    usual = float(np.quantile(np.sort(lengths)[:-1], _LONGEST_USUAL))
+    usual = usual_run(values)
     least = _SHORTEST if usual <= 1 else max(_SHORTEST, _TIMES_USUAL * usual)
     chosen = (lengths >= least) & (lengths <= max(_STUCK, _STUCK_TIMES_USUAL * usual))
     chosen &= ~at_rest(values[starts], lengths, least)
@@ -57,14 +57,15 @@ def find(seen: Evidence) -> list[Finding]:
 
 
 def _while_moving(seen: Evidence, stamps: IntArray, first: IntArray, last: IntArray) -> BoolArray:
-    """Return True where the actuator has a new value at half the rows of a hold, or more often."""
+    """Return True where the actuator moves during a hold, and at least half as often as it usually does."""
     actuator = seen.trace("actuator")
     if actuator.constant:
         return np.zeros(len(first), dtype=np.bool_)
     stored, at = as_stored(actuator, seen)
     moves = at[1:][stored[1:] != stored[:-1]]
     during = np.searchsorted(moves, stamps[last], "right") - np.searchsorted(moves, stamps[first], "right")
-    return np.asarray(during >= _MOVING * (last - first))
+    usually = len(moves) / max(1, len(stored)) * (last - first)
+    return np.asarray(during >= np.maximum(1.0, _MOVING * usually))
 
 
 def _told(trace: Trace, values: FloatArray, stamps: IntArray, first: IntArray, last: IntArray) -> Finding:

@@ -9,14 +9,14 @@ import numpy as np
 from auditor.arrays import FloatArray, IntArray
 from auditor.logs.findings.base import Finding
 from auditor.logs.findings.evidence import Evidence, Trace
-from auditor.logs.findings.series import as_stored, excursions, joined, usual_change
+from auditor.logs.findings.jumps import FAR, beside, excursions
+from auditor.logs.findings.series import as_stored, joined, usual_change
 from auditor.logs.findings.wording import moment, plural
 from auditor.text import number
 
 OFFSET_UNITS = ((1.8, 32.0), (1 / 1.8, -32 / 1.8), (1.0, 273.15), (1.0, -273.15))
 """Factor and offset between Celsius, Fahrenheit and kelvin; other units differ by a factor alone."""
 
-_FAR = 10.0
 _MOST = 20
 _ROWS = 300
 _FEWEST = 100
@@ -25,6 +25,8 @@ _AGREE = 1.25
 _LEVEL_AGREES = 0.05
 _CALM = 0.9
 _APART = 2.0
+_AT_ONCE = 0.5
+_ROOM = 0.3
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -65,7 +67,10 @@ def _judged(values: FloatArray, at: int) -> UnitChange | None:
     scatter, scatter_after = _scatter(earlier), _scatter(later)
     if min(scatter, scatter_after) <= 0 or before * after == 0:
         return None
-    if abs(after - before) <= _APART * max(float(np.std(earlier)), float(np.std(later))):
+    jump = abs(float(values[at] - values[at - 1]))
+    if jump < _AT_ONCE * abs(after - before) or abs(after - before) <= _APART * max(
+        float(np.std(earlier)), float(np.std(later))
+    ):
         return None
     factor, offset = after / before, 0.0
     matched = abs(np.log(abs(factor))) > np.log(_FACTOR) and factor > 0 and _like(scatter_after / scatter, factor)
@@ -77,8 +82,8 @@ def _judged(values: FloatArray, at: int) -> UnitChange | None:
 
 
 def _like(ratio: float, factor: float) -> bool:
-    """Tell whether the scatter has changed by the factor."""
-    return bool(abs(np.log(ratio / factor)) < np.log(_AGREE))
+    """Tell whether the scatter has changed by the factor, roughly: it is never quite the same on both sides."""
+    return bool(abs(np.log(ratio / factor)) < max(np.log(_AGREE), _ROOM * abs(np.log(factor))))
 
 
 def _scatter(values: FloatArray) -> float:
@@ -103,10 +108,12 @@ def _looked_at(trace: Trace, seen: Evidence) -> list[Finding]:
     if len(values) < 2 * _FEWEST:
         return []
     size = np.abs(np.diff(values))
-    aside = excursions(values, joined(trace, seen, stamps), trace.quantum)
-    size[np.concatenate((aside.first - 1, aside.last))] = 0.0
-    largest = np.sort(np.argsort(size)[-_MOST:])
-    largest = largest[size[largest] > _FAR * usual_change(values, trace.quantum)]
+    large = np.flatnonzero(size > FAR * usual_change(values, trace.quantum))
+    if len(large) == 0:
+        return []
+    aside = beside(excursions(values, joined(trace, seen, stamps), trace.quantum), len(size))
+    large = large[~aside[large]]
+    largest = np.sort(large[np.argsort(size[large], kind="stable")[-_MOST:]])
     changes = [c for c in unit_changes(values, largest) if not _followed(c, trace, seen, stamps)]
     return [_told(trace, changes, stamps)] if changes else []
 

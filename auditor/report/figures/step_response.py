@@ -13,8 +13,7 @@ from auditor.report.figures import style
 from auditor.report.figures.record import heading
 from auditor.report.parameters import StepResponses, step_responses
 from auditor.report.phrases import clean
-
-_SCALES = ((86400.0, "d"), (3600.0, "h"), (60.0, "min"), (1.0, "s"), (1e-3, "ms"))
+from auditor.text import TIME_UNITS
 
 
 def compose(content: Content) -> Figure | None:
@@ -35,17 +34,28 @@ def picture(model: Model, unit: str, suffix: str) -> bytes:
     OutputError
         Another suffix is asked for.
     """
-    if suffix not in (".svg", ".png"):
-        raise OutputError(Problem(what="no such picture format", found=suffix or "no suffix", expected=".png or .svg"))
+    check_suffix(suffix)
     with style.drawing():
         figure = style.new_figure(2.7)
         draw(figure.add_subplot(), step_responses(model), clean(unit))
         return style.png(figure) if suffix == ".png" else style.svg(figure).encode("utf-8")
 
 
+def check_suffix(suffix: str) -> None:
+    """Say whether a picture can be written with this suffix before anything is computed for it.
+
+    Raises
+    ------
+    OutputError
+        It is neither `.svg` nor `.png`.
+    """
+    if suffix not in (".svg", ".png"):
+        raise OutputError(Problem(what="no such picture format", found=suffix or "no suffix", expected=".png or .svg"))
+
+
 def draw(axes: Axes, answers: StepResponses, unit: str) -> Axes:
     """Draw the middle 90 % of the draws as a band, each draw as a thin line, the likeliest thick."""
-    size, name = next((s for s in _SCALES if answers.seconds[-1] >= 3 * s[0]), _SCALES[-1])
+    size, name = next((s for s in TIME_UNITS if answers.seconds[-1] >= 3 * s[0]), TIME_UNITS[-1])
     at = answers.seconds / size
     low, high = np.quantile(answers.all, (0.05, 0.95), axis=0)
     axes.fill_between(at, low, high, color=style.PALE, alpha=0.35, linewidth=0)
