@@ -165,7 +165,7 @@ def _shown(recommendation: Recommendation, replayed: Replayed) -> set[int]:
         {f.replay for f in replayed.flags if f.severity == "danger" and replayed.replays[f.replay].answerable},
         key=lambda i: (replayed.replays[i].measures.updates, i),
     )
-    chosen = [recommendation.replay] if recommendation.replay is not None else []
+    chosen = [i for i in (recommendation.replay, recommendation.nearest) if i is not None]
     return {*chosen, *dangerous[:SHOWN_DANGERS]}
 
 
@@ -188,7 +188,7 @@ def _without_model(
         replays=(),
         flags=(),
         recommendation=Recommendation(replay=None, reasons=("No rule was replayed: there is no model of the loop.",)),
-        verdict=_undecided(tuple(str(p) for p in error.problems), suggest(record, loop, tau_cl_s)),
+        verdict=_undecided(tuple(p.sentence() for p in error.problems), suggest(record, loop, tau_cl_s)),
         provenance=provenance,
     )
 

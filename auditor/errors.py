@@ -31,6 +31,13 @@ class Problem:
     expected: str = ""
     do: str = ""
 
+    def sentence(self) -> str:
+        """The same in one paragraph, for reports."""
+        parts = [self.what[:1].upper() + self.what[1:]]
+        labelled = (("found: ", self.found), ("expected: ", self.expected), ("what to do: ", self.do))
+        parts += [label + text for label, text in labelled if text]
+        return "; ".join(part.rstrip(".") for part in parts) + "."
+
     def __str__(self) -> str:
         rows = [self.what]
         for label, text in (

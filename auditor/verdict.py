@@ -6,7 +6,7 @@ import math
 from dataclasses import dataclass
 
 from auditor.objections import Case, Objections, examine
-from auditor.replay import Replay
+from auditor.rules import get_rule
 from auditor.text import number, percent
 
 CAUTIONS = (
@@ -30,11 +30,13 @@ record, and the year after, will not be kinder than the part it was chosen on.""
 class Recommendation:
     """The setting that would be chosen, on the first part of the record alone.
 
-    `replay` is an index into the audit's replays, None when nothing can be recommended.
+    `replay` is an index into the audit's replays, None when nothing can be recommended; `nearest` is then the setting
+    with the fewest objections.
     """
 
     replay: int | None
     reasons: tuple[str, ...]
+    nearest: int | None = None
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -68,7 +70,7 @@ def recommend(case: Case) -> Recommendation:
     open_ones = [i for i, found in seen.items() if not found.fails]
     pool = roomy or clean or open_ones
     if not pool:
-        return Recommendation(replay=None, reasons=_why_none(case, seen))
+        return Recommendation(replay=None, reasons=_why_none(case, seen), nearest=_nearest(case, seen))
     if roomy:
         chosen = min(roomy, key=lambda i: (case.replays[i].first.updates, case.replays[i].first.rms_error, i))
     else:
@@ -81,37 +83,64 @@ def _why_chosen(case: Case, chosen: int, found: Objections, *, reserve: bool) ->
     replay = case.replays[chosen]
     unit = case.loop.signals.measurement.unit
     facts = f"{percent(replay.first.saved_fraction)} saved, RMS error {number(replay.first.rms_error)} {unit}"
+    link = replay.setting.link
+    first = "On the first part of the record"
     if found.straddles:
-        return (
-            f"On the first part of the record nothing certain speaks against it ({facts}), but: "
-            f"{'; '.join(found.straddles)}.",
+        why = f"{first} nothing certain speaks against it ({facts}), but: {'; '.join(found.straddles)}."
+    elif reserve:
+        why = (
+            f"{first} it has the fewest updates of all settings on the {link} link that keep what is asked for with "
+            f"{percent(1 - RESERVE)} of the accepted error in reserve: {facts}."
         )
-    if reserve:
-        return (
-            f"On the first part of the record it has the fewest updates of all settings that keep what is asked for "
-            f"with {percent(1 - RESERVE)} of the accepted error in reserve: {facts}.",
+    else:
+        why = (
+            f"{first} it has the smallest error of the settings on the {link} link that keep what is asked for; none "
+            f"leaves {percent(1 - RESERVE)} of the accepted error in reserve: {facts}."
         )
+    return (why, *_other_link(case))
+
+
+def _other_link(case: Case) -> tuple[str, ...]:
+    """Say that rules on the link to the actuator were replayed and not chosen from."""
+    links = {r.setting.link for r in case.replays if r.setting.rule != "periodic"}
+    if links != {"sensor", "actuator"}:
+        return ()
     return (
-        f"On the first part of the record it has the smallest error of the settings that keep what is asked for; none "
-        f"leaves {percent(1 - RESERVE)} of the accepted error in reserve: {facts}.",
+        "Rules on the link to the actuator (actuator-deadband) were replayed beside and not chosen from: they need a "
+        "controller beside the sensor that sees every sample. Ask for them alone under [[rules]] to have them decided "
+        "on.",
     )
 
 
 def _why_none(case: Case, seen: dict[int, Objections]) -> tuple[str, ...]:
     if not seen:
         return ("No event rule was answerable from this log.",)
-    nearest = min(seen, key=lambda i: (len(seen[i].fails), case.replays[i].first.updates, i))
-    label = setting_label(case.replays[nearest])
+    nearest = _nearest(case, seen)
+    assert nearest is not None
+    many = f"None of the {len(seen)} settings that the log can answer keeps"
+    one = "The only setting that the log can answer does not keep"
     return (
-        f"None of the {len(seen)} settings that the log can answer keeps what is asked for on the first part of the "
-        "record.",
-        f"The nearest is {label}: {'; '.join(seen[nearest].fails)}.",
+        f"{one if len(seen) == 1 else many} what is asked for on the first part of the record.",
+        f"The nearest is {setting_label(case, nearest)}: {'; '.join(seen[nearest].fails)}.",
+        *_other_link(case),
     )
 
 
-def setting_label(replay: Replay) -> str:
-    """Name a setting in one line."""
-    values = ", ".join(f"{k} {number(v)}" for k, v in replay.setting.values.items())
+def _nearest(case: Case, seen: dict[int, Objections]) -> int | None:
+    """The setting with the fewest objections on the first part, then the fewest updates."""
+    return min(seen, key=lambda i: (len(seen[i].fails), case.replays[i].first.updates, i), default=None)
+
+
+def setting_label(case: Case, index: int) -> str:
+    """Name a setting in one line, with units."""
+    replay, signals = case.replays[index], case.loop.signals
+    watched = signals.actuator.unit if replay.setting.link == "actuator" else signals.measurement.unit
+    units = {"measurement": watched, "measurement·s": f"{watched}·s", "command": watched}
+    specs = {spec.name: spec.unit for spec in get_rule(replay.setting.rule).settings}
+    values = ", ".join(
+        f"{name.removesuffix('_s')} {number(value)} {units.get(specs[name], specs[name])}".rstrip()
+        for name, value in replay.setting.values.items()
+    )
     return f"{replay.setting.rule} ({values})" if values else replay.setting.rule
 
 
@@ -146,7 +175,7 @@ def _cannot_decide(case: Case) -> tuple[str, ...]:
     if case.model is not None and case.hours < case.loop.accept.min_hours:
         reasons.append(
             f"{number(case.hours)} h can be counted after the warm-up; {number(case.loop.accept.min_hours)} h are "
-            f"asked for: {number(case.loop.accept.min_hours - case.hours)} h more would settle it."
+            f"asked for: at least {number(case.loop.accept.min_hours - case.hours)} h more are needed."
         )
     return tuple(reasons)
 
@@ -168,20 +197,21 @@ def _judge(case: Case, chosen: int) -> tuple[str, tuple[str, ...]]:
     names = {"first": "on the part it was chosen on", "rest": "on the rest of the record"}
     fails = tuple(f"{names[p].capitalize()}: {text}." for p, found in parts.items() for text in found.fails)
     straddles = tuple(f"{names[p].capitalize()}: {text}." for p, found in parts.items() for text in found.straddles)
-    label = setting_label(case.replays[chosen])
+    label = setting_label(case, chosen)
     if fails:
         return "keep", (f"The best setting, {label}, does not hold.", *fails, *straddles)
     if straddles:
         return "undecided", (f"The best setting, {label}, cannot be decided on.", *straddles, case.experiment)
-    return "switch", _why_switch(case, case.replays[chosen])
+    return "switch", _why_switch(case, chosen)
 
 
-def _why_switch(case: Case, replay: Replay) -> tuple[str, ...]:
+def _why_switch(case: Case, chosen: int) -> tuple[str, ...]:
+    replay = case.replays[chosen]
     unit = case.loop.signals.measurement.unit
     low, high = replay.interval90["rms_error"]
     record = case.baseline.rms_error if case.baseline is not None else math.nan
     reasons = [
-        f"{setting_label(replay)} would have saved {percent(replay.measures.saved_fraction)} of the updates over "
+        f"{setting_label(case, chosen)} would have saved {percent(replay.measures.saved_fraction)} of the updates over "
         f"{number(case.hours)} h ({percent(replay.first.saved_fraction)} on the part it was chosen on, "
         f"{percent(replay.rest.saved_fraction)} on the rest).",
         f"Its RMS error is {number(replay.measures.rms_error)} {unit} (90 % interval {number(low)}…{number(high)}); "

@@ -21,6 +21,12 @@ WORDS = {
 }
 
 
+LEGEND = (
+    "> chosen; 90 % interval of the RMS error; trust in this answer; danger: danger flags; clock: better, worse or ? "
+    "(not to be told) against the best slowed-down clock with no more updates"
+)
+
+
 def decision(audit: Audit) -> str:
     """The decision in about ten lines, and the settings worth a look."""
     head = f"{audit.loop.name}: {WORDS[audit.verdict.decision]}"
@@ -28,7 +34,7 @@ def decision(audit: Audit) -> str:
     if audit.model is not None:
         parts.append(paragraph(f"Trust in the model: {audit.model.trust}. {audit.model.reasons[0]}"))
     if audit.replays:
-        parts += ["", shortlist(audit)]
+        parts += ["", shortlist(audit), paragraph(LEGEND)]
     parts += ["", *[paragraph(f"! {c}") for c in audit.verdict.cautions[:3]]]
     return "\n".join(parts)
 
@@ -44,8 +50,8 @@ def shortlist(audit: Audit) -> str:
             best[r.setting.rule] = i
     picked = sorted({*best.values(), *([chosen] if chosen is not None else [])})
     rows += [_row(audit, i, mark="> " if i == chosen else "") for i in picked]
-    head = ["rule", "setting", "updates/h", "saved", f"RMS [{unit}]", "90 %", "danger", "clock"]
-    right = [False, False, True, True, True, True, True, False]
+    head = ["rule", "setting", "updates/h", "saved", f"RMS [{unit}]", "90 %", "trust", "danger", "clock"]
+    right = [False, False, True, True, True, True, False, True, False]
     return table(head, rows, right)
 
 
@@ -66,13 +72,14 @@ def _nearer(audit: Audit, a: int, b: int) -> bool:
 def _baseline_row(audit: Audit) -> list[str]:
     b = audit.baseline
     if b is None:
-        return ["(record)", "", "–", "–", "–", "", "", ""]
+        return ["(record)", "", "–", "–", "–", "", "", "", ""]
     return [
         "(record)",
         f"every {duration(audit.loop.period)}",
         number(b.updates_per_hour),
         "0 %",
         number(b.rms_error),
+        "",
         "",
         "",
         "",
@@ -91,8 +98,9 @@ def _row(audit: Audit, index: int, mark: str = "") -> list[str]:
         percent(r.measures.saved_fraction),
         number(r.measures.rms_error),
         f"{number(low)}…{number(high)}",
+        r.trust,
         str(dangers) if dangers else "-",
-        {"better": "better", "worse": "worse", "unclear": "?"}[r.against_periodic],
+        "-" if r.setting.rule == "periodic" else {"unclear": "?"}.get(r.against_periodic, r.against_periodic),
     ]
 
 

@@ -40,7 +40,7 @@ def describe(case: Case, stretch: Stretch) -> Evidence:
     distance = float(np.min(sign * (limit - stretch.rows(case.record.u))[stretch.parts[name].any(axis=1)]))
     detail = (
         f"{case.actuator_name} at its {name} limit {quantity(limit, case.actuator_unit, 3)} {stretch.lasting()}; "
-        f"the record came no closer than {quantity(distance, case.actuator_unit)}"
+        f"in that time the record came no closer than {quantity(distance, case.actuator_unit)}"
     )
     return Evidence(detail, {"limit": limit, "distance_to_limit": distance})
 

@@ -19,6 +19,7 @@ from auditor.identify.residual import choose_anti_windup, controller_residual, e
 from auditor.identify.thresholds import NULL_GOOD, OWN_LAW
 from auditor.identify.trust import Evidence, judge
 from auditor.identify.validate import explained_percent, held_out_percent, setpoint_moves
+from auditor.logs.fitness import require_usable
 from auditor.logs.record import Record
 from auditor.logs.spans import bridge
 from auditor.loop import Loop
@@ -59,6 +60,7 @@ def identify(
         The log does not carry enough to identify the loop; the error names the test that failed and the experiment
         that would help.
     """
+    require_usable(record)
     progress("recovering the controller", 0.0)
     recovery = recover_controller(record, loop)
     if not recovery.usable:
@@ -73,7 +75,8 @@ def identify(
     best = ensemble.plants[ensemble.best]
     controller = recovery.controller
     if loop.controller is None or loop.controller.anti_windup is None:
-        controller = choose_anti_windup(aligned, controller, best)
+        warm_up = _warm_up(ensemble, record)
+        controller = choose_anti_windup(aligned, controller, best, warm_up=warm_up)
     returned = _return(aligned, controller, ensemble)
     model = _model(aligned, loop, recovery, replace_gap(controller, loop), ensemble, returned, seed=seed, quick=quick)
     progress("checking the model", 1.0)
@@ -103,10 +106,14 @@ def _own_law(record: Record, loop: Loop, recovery: Recovery) -> Problem:
     )
 
 
+def _warm_up(ensemble: Ensemble, record: Record) -> int:
+    """Samples after which a replay has forgotten how its span began."""
+    return round(10.0 * ensemble.tau_cl_s / record.period)
+
+
 def _return(record: Record, controller: Pid, ensemble: Ensemble) -> _Return:
     best = ensemble.plants[ensemble.best]
-    warm_up = round(10.0 * ensemble.tau_cl_s / record.period)
-    null = null_replay(record, controller, best, warm_up=warm_up)
+    null = null_replay(record, controller, best, warm_up=_warm_up(ensemble, record))
     rho = controller_residual(record, controller).rho
     rounded = record.u_quantum is not None
     return _Return(

@@ -125,12 +125,18 @@ def anti_windup_of(record: Record, controller: Pid) -> Pid:
     return best if unexplained_movement(record, best) < floor else controller
 
 
-def choose_anti_windup(record: Record, controller: Pid, plant: Plant) -> Pid:
-    """Return the controller with the anti-windup of the smallest null replay, its own when it never meets a limit."""
+def choose_anti_windup(record: Record, controller: Pid, plant: Plant, *, warm_up: int = 0) -> Pid:
+    """Return the controller with the anti-windup of the smallest null replay, its own when it never meets a limit.
+
+    Parameters
+    ----------
+    warm_up : int
+        As in `null_replay`: a span that begins at a limit begins with a wrong integral under every scheme.
+    """
     if not saturates(record) or not math.isfinite(controller.integral_time):
         return controller
     candidates = [controller, anti_windup_of(record, controller), *_schemes(controller)]
-    return min(candidates, key=lambda scheme: max(thresholds.NOTHING_LEFT, null_replay(record, scheme, plant)))
+    return min(candidates, key=lambda s: max(thresholds.NOTHING_LEFT, null_replay(record, s, plant, warm_up=warm_up)))
 
 
 def explained_by_error(rho: FloatArray, record: Record) -> float:

@@ -116,9 +116,10 @@ def is_recommended(audit: Audit) -> bool:
 
 
 def focus_of(audit: Audit) -> int | None:
-    """Index of the replay the audit chose, else of the best candidate, None when nothing was answered."""
-    if audit.recommendation.replay is not None:
-        return audit.recommendation.replay
+    """Index of the replay the audit chose, else of the nearest or the best one, None when nothing was answered."""
+    chosen = audit.recommendation
+    if chosen.replay is not None or chosen.nearest is not None:
+        return chosen.replay if chosen.replay is not None else chosen.nearest
     candidates = _answered(audit, lambda replay: replay.setting.rule != "periodic")
     return _best(audit, candidates)
 

@@ -99,7 +99,7 @@ _WHOLE: tuple[tuple[str, _Cell], ...] = (
 )
 _SURE: tuple[tuple[str, _Cell], ...] = (
     ("against the clock at as many updates", lambda c, o: _against(o)),
-    ("the same on the rest alone", lambda c, o: o.replay.against_periodic_rest if o.replay else "–"),
+    ("the same on the rest alone", lambda c, o: o.replay.against_periodic_rest if o.replay and _event(o) else "–"),
     ("RMS error less that of the clock {unit}, 90 %", lambda c, o: _difference(o)),
     ("count without a model", lambda c, o: number(o.replay.naive_updates) if o.replay else "–"),
     ("trust in the answer", lambda c, o: o.replay.trust if o.replay else "recorded"),
@@ -108,11 +108,16 @@ _SURE: tuple[tuple[str, _Cell], ...] = (
 
 
 def _against(option: Option) -> str:
-    return option.replay.against_periodic if option.replay and option.replay.setting.rule != "periodic" else "–"
+    return option.replay.against_periodic if option.replay and _event(option) else "–"
+
+
+def _event(option: Option) -> bool:
+    """True for an event rule: a clock is not held against itself."""
+    return option.replay is not None and option.replay.setting.rule != "periodic"
 
 
 def _difference(option: Option) -> str:
-    ends = option.replay.rms_difference90 if option.replay else None
+    ends = option.replay.rms_difference90 if option.replay and _event(option) else None
     if ends is None:
         return "–"
     # Where the clock ran away under some likely plants there is no lower end.

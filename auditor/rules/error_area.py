@@ -40,4 +40,5 @@ RULE = Rule(
     pack=lambda values, period: (values["area"], period, values["delta"]),
     memory_rows=lambda values, period: 1,
     threshold="delta",
+    links=("sensor",),
 )

@@ -30,5 +30,6 @@ RULE = Rule(
     fires=fires,
     pack=lambda values, period: (values["delta"],),
     threshold="delta",
+    links=("sensor",),
     predicts=True,
 )

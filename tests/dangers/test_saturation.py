@@ -23,7 +23,7 @@ def test_an_actuator_at_its_limit_is_flagged(at: float, name: str) -> None:
     assert flag.values == {"share": 0.6, "duration_s": 600.0, "limit": at, "distance_to_limit": distance}
     assert flag.detail.startswith(f"gate at its {name} limit")
     assert flag.detail.endswith(
-        f"for 10 min under 60 % of the likely plants; the record came no closer than {distance:.0f} %"
+        f"for 10 min under 60 % of the likely plants; in that time the record came no closer than {distance:.0f} %"
     )
 
 
