@@ -7,10 +7,25 @@ import math
 from collections.abc import Iterable
 
 
-def nearest(word: str, known: Iterable[str]) -> str | None:
-    """Return the known word closest to `word`, or None when nothing is close."""
-    close = difflib.get_close_matches(word, list(known), n=1, cutoff=0.5)
+def nearest(word: str, known: Iterable[str], cutoff: float = 0.5) -> str | None:
+    """Return the known word closest to `word`, or None when nothing is close; `cutoff` 1 asks for the word itself."""
+    close = difflib.get_close_matches(word, list(known), n=1, cutoff=cutoff)
     return close[0] if close else None
+
+
+def nearest_file(name: str, known: Iterable[str]) -> str | None:
+    """Return the known file name closest to `name`, or None when nothing is close.
+
+    Endings are left out of the comparison: they would make every short name alike.
+    """
+    stems = {_stem(other): other for other in sorted(known, reverse=True)}
+    close = nearest(_stem(name), stems, cutoff=0.6)
+    return None if close is None else stems[close]
+
+
+def _stem(name: str) -> str:
+    bare = name.casefold().removesuffix(".gz").removesuffix(".zst")
+    return bare.rpartition(".")[0] or bare
 
 
 FILL_IN = "# FILL IN"

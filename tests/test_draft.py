@@ -10,7 +10,7 @@ import pyarrow as pa
 import pyarrow.parquet as pq
 import pytest
 
-from auditor.draft import Draft, draft
+from auditor.draft import Draft, draft, peek, whole
 from auditor.draft.clock import period_text
 from auditor.draft.dress import look_at
 from auditor.draft.ranges import actuator_range, constant_setpoint
@@ -575,3 +575,43 @@ def test_delimiter_is_not_taken_from_decimal_commas():
     text = "t;a;b\n" + "".join(f"{k};1,{k};2,{k}\n" for k in range(10, 60))
     dress = look_at(text, "utf-8")
     assert (dress.delimiter, dress.decimal, dress.names, dress.body) == (";", ",", ("t", "a", "b"), 1)
+
+
+@pytest.mark.parametrize(
+    ("values", "unit", "low", "high"),
+    [
+        ([20.0] * 30 + [*np.linspace(20.5, 98.0, 70)], "%", 20.0, 100.0),
+        ([*np.linspace(3.0, 79.5, 970)] + [80.0] * 30, "%", 0.0, 80.0),
+        # Stored in steps of 10 %, without a stop: its last steps are the rarest.
+        ([30.0] * 5 + [40.0] * 50 + [50.0] * 50 + [60.0] * 5, "%", 0.0, 100.0),
+    ],
+)
+def test_an_end_at_which_many_rows_stand_is_the_limit(values, unit, low, high):
+    found = actuator_range(np.array(values), unit)
+    assert (found.low, found.high) == (low, high)
+    assert ("stood at exactly" in found.reason + found.high_reason) == ((low, high) != (0.0, 100.0))
+
+
+def long_loop(rows: int) -> str:
+    """A log of one row per second whose last rows hold the extremes: in automatic, then in manual."""
+    w = {name: values.copy() for name, values in world(rows=rows).items()}
+    w["y"][-20], w["y"][-5] = 9.0, 77.0
+    mode = ["AUTO"] * (rows - 10) + ["HAND"] * 10
+    columns = [stamps(rows, step=1.0), *map(cells, (w["y"], w["r"], w["u"])), mode]
+    return table(["time", "level_m", "target_m", "gate", "mode"], columns)
+
+
+def test_the_hints_are_of_every_row_in_automatic(tmp_path):
+    made, _ = drafted(tmp_path / "pool.csv", long_loop(25_000))
+    assert "up to 9 m, in automatic" in made.text
+    assert "77" not in made.text.partition("[limits]")[2]
+
+
+def test_a_log_read_in_parts_is_read_whole_for_the_hints(tmp_path, monkeypatch):
+    monkeypatch.setattr(peek, "PART", 100_000)
+    made, _ = drafted(tmp_path / "pool.csv", long_loop(12_000))
+    assert "its beginning, middle and end" in made.text
+    assert "up to 9 m, in automatic\n" in made.text
+    monkeypatch.setattr(whole, "MOST_BYTES", 1000)
+    made, _ = drafted(tmp_path / "pool.csv", long_loop(12_000))
+    assert " rows looked at" in made.text

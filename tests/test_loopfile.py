@@ -691,3 +691,28 @@ k = [{ z = 1 }, { z = 2,
     assert lines[("t", "list", 1, "k", 1, "q")] == 13
     assert line_of(("t", "list", 1, "k", 1, "nothing"), lines) == 12
     assert line_of(("nothing",), lines) is None
+
+
+@pytest.mark.parametrize(
+    ("line", "do"),
+    [
+        ("period = 0,3", "use a point: 0.3"),
+        ("period = -12,50  # s", "use a point: -12.50"),
+        ("period = [1, 0,05]", "use a point: 0.05"),
+        ("period = { from = 0,1, to = 1 }", "use a point: 0.1"),
+    ],
+)
+def test_a_decimal_comma_is_recognised(tmp_path, line, do):
+    problem = fault(tmp_path, SHORT.replace("period = 60", line))
+    assert "decimal comma" in problem.what
+    assert problem.do == do
+
+
+def test_a_comma_that_is_no_decimal_sign_is_not_taken_for_one(tmp_path):
+    assert "decimal comma" not in fault(tmp_path, SHORT.replace("period = 60", "period = [1,2")).what
+
+
+def test_a_loop_file_with_another_name_is_not_offered(tmp_path):
+    (tmp_path / "cl_open.toml").write_text(SHORT)
+    with pytest.raises(LoopFileError, match="check the path"):
+        read_loop(tmp_path / "nope.toml")

@@ -19,9 +19,11 @@ def register(app: typer.Typer) -> None:
         from auditor.cli.summary import asked_of_log, findings_table, record_lines
         from auditor.logs.align import read_record
         from auditor.loopfile import controller_in_words, read_loop
+        from auditor.panel import requested
         from auditor.report.as_json import log_json
 
         loop = read_loop(loopfile)
+        requested(loop, loop.period)
         with progress_on_stderr(quiet=json) as progress:
             progress("reading the log", 0.0)
             record = read_record(loop)

@@ -66,7 +66,7 @@ def copy_sample(known: dict[str, Path], name: str, folder: Path) -> Path:
     Raises
     ------
     CommandError
-        There is no such sample.
+        There is no such sample, or the folder holds another loop file.
     """
     if name not in known:
         close = nearest(name, known)
@@ -79,7 +79,23 @@ def copy_sample(known: dict[str, Path], name: str, folder: Path) -> Path:
         )
     source = known[name]
     log = tomllib.loads(source.read_text("utf-8"))["log"]["path"]
+    _refuse_others(folder, source.name)
     folder.mkdir(parents=True, exist_ok=True)
     for path in (source, source.parent / log):
         shutil.copyfile(path, folder / path.name)
     return folder / source.name
+
+
+def _refuse_others(folder: Path, own: str) -> None:
+    """Keep a sample out of a folder in which another loop lives: its log and its report would be written over."""
+    others = sorted(path.name for path in folder.glob("*.toml") if path.name != own)
+    if others:
+        raise CommandError(
+            Problem(
+                what="the folder holds another loop's files",
+                where=str(folder),
+                found=", ".join(others[:5]),
+                expected=f"a new folder, or one with {own} only",
+                do="give another folder with --out",
+            )
+        )

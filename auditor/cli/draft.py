@@ -36,10 +36,10 @@ def register(app: typer.Typer) -> None:
 
 def guesses(drafted: Draft) -> str:
     """What was guessed, how surely, and why."""
-    from auditor.cli.screen import table
+    from auditor.cli.screen import table_with_notes
 
     rows = [[g.key, g.value, g.sure, g.reason] for g in drafted.guesses]
-    return table(["key", "guess", "how sure", "why"], rows)
+    return table_with_notes(["key", "guess", "how sure", "why"], rows)
 
 
 def next_steps(drafted: Draft, target: Path) -> str:

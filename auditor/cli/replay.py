@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
@@ -102,11 +103,17 @@ def parse(pairs: list[str]) -> dict[str, float]:
                     what="a setting cannot be read",
                     found=pair,
                     expected="KEY=VALUE, a number or a duration such as 15min",
+                    do=_point_for_comma(text),
                 )
             )
     if problems:
         raise CommandError(*problems)
     return values
+
+
+def _point_for_comma(text: str) -> str:
+    comma = re.fullmatch(r"\s*([-+]?\d+),(\d+\s*[A-Za-z]*)\s*", text)
+    return f"use a point: {comma[1]}.{comma[2]}" if comma else ""
 
 
 def _setting(name: str, text: str) -> tuple[str, float]:

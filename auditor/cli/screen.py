@@ -11,6 +11,7 @@ from contextlib import contextmanager
 from auditor.progress import Progress
 
 WIDTH = 80
+NARROWEST = 30
 
 
 @contextmanager
@@ -69,6 +70,21 @@ def table(head: Sequence[str], rows: Sequence[Sequence[str]], right: Sequence[bo
     lines = [line for row in all_rows for line in _row(row, widths, aligned)]
     rule = "  ".join("-" * w for w in widths)
     return "\n".join([lines[0], rule, *lines[1:]])
+
+
+def table_with_notes(head: Sequence[str], rows: Sequence[Sequence[str]]) -> str:
+    """Lay out a table whose last column is running text; below its row, indented, where the column would be narrow."""
+    widths = [max(len(row[i]) for row in (head, *rows)) for i in range(len(head) - 1)]
+    if WIDTH - sum(widths) - 2 * len(widths) >= NARROWEST:
+        return table(head, rows)
+    lines = [_short_row(head, widths), "  ".join("-" * width for width in widths)]
+    for row in rows:
+        lines += [_short_row(row, widths), paragraph(row[-1], indent=4)]
+    return "\n".join(lines)
+
+
+def _short_row(row: Sequence[str], widths: Sequence[int]) -> str:
+    return "  ".join(cell.ljust(width) for cell, width in zip(row, widths, strict=False)).rstrip()
 
 
 def _row(row: Sequence[str], widths: Sequence[int], right: Sequence[bool]) -> list[str]:

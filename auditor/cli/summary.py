@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from auditor.cli.screen import bullets, paragraph, table
+from auditor.cli.screen import bullets, paragraph, table, table_with_notes
 from auditor.text import duration, number, percent
 
 if TYPE_CHECKING:
@@ -155,7 +155,7 @@ def findings_table(record: Record) -> str:
         [f.kind, f.signal, str(f.count), f"{f.detail}. Effect: {f.effect}."]
         for f in sorted(record.findings, key=lambda f: order.get(f.weight, 3))
     ]
-    return table(["finding", "signal", "count", "what, and what was done about it"], rows)
+    return table_with_notes(["finding", "signal", "count", "what, and what was done about it"], rows)
 
 
 def asked_of_log(record: Record, loop: Loop) -> str:

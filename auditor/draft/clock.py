@@ -83,6 +83,12 @@ def gaps_of(ns: IntArray, starts: BoolArray) -> FloatArray:
     return -gaps if 2 * np.count_nonzero(gaps < 0) > len(gaps) else gaps
 
 
+def is_newest_first(ns: IntArray) -> bool:
+    """Return True where most times are earlier than the one in the row above; `stamps.NO_TIME` is left out."""
+    steps = np.diff(ns[ns != stamps.NO_TIME])
+    return 2 * int(np.count_nonzero(steps < 0)) > len(steps)
+
+
 def find_clock(columns: Sequence[Column], starts: BoolArray) -> Clock | None:
     """Return the column that most likely tells the time, None when there is none.
 

@@ -10,9 +10,9 @@ from pathlib import Path
 
 import numpy as np
 
-from auditor.arrays import FloatArray
 from auditor.draft.clock import period_text
 from auditor.draft.columns import Column
+from auditor.draft.extent import Extent
 from auditor.draft.guess import CHECK, LIKELY, SURE, Guess
 from auditor.draft.ranges import actuator_range, constant_setpoint
 from auditor.draft.roles import Roles, word_for
@@ -175,7 +175,7 @@ def _unit(role: str, column: Column) -> Iterator[Guess]:
 def _setpoint(found: Survey, roles: Roles, columns: Sequence[Column]) -> Iterator[Guess]:
     y = columns[roles.measurement]
     if roles.setpoint is None:
-        value = plain_number(constant_setpoint(found.grid[:, roles.measurement]))
+        value = plain_number(constant_setpoint(_extent(found).measurement))
         reason = f"no column behaves like a setpoint of {y.name}; this is where it stays on average"
         yield Guess(key="signals.setpoint.value", value=value, reason=reason, sure=CHECK)
         yield from _unit("setpoint", y)
@@ -202,11 +202,11 @@ def _actuator(found: Survey, roles: Roles, columns: Sequence[Column]) -> Iterato
         found, "signals.actuator.column", u.name, _said(reason, word), _trust(roles, _all_worded(roles, columns))
     )
     yield from _unit("actuator", u)
-    limits = actuator_range(found.grid[:, roles.actuator], u.unit)
+    limits = actuator_range(_extent(found).actuator, u.unit)
     if limits.low is not None:
         yield Guess(key="signals.actuator.low", value=plain_number(limits.low), reason=limits.reason, sure=limits.sure)
     if limits.high is not None:
-        reason = limits.reason if limits.low is None else "see low"
+        reason = limits.reason if limits.low is None else limits.high_reason
         yield Guess(key="signals.actuator.high", value=plain_number(limits.high), reason=reason, sure=limits.sure)
 
 
@@ -228,18 +228,24 @@ def hints(found: Survey) -> dict[str, str]:
     """Say what the record itself did, for the lines that only the owner can fill in."""
     if found.roles is None:
         return {}
-    y = found.grid[:, found.roles.measurement]
+    extent = _extent(found)
     unit = f" {found.candidates[found.roles.measurement].unit}".rstrip()
-    error = y - (np.nanmean(y) if found.roles.setpoint is None else found.grid[:, found.roles.setpoint])
-    return {
-        "low": f"the record goes down to {np.nanmin(y):.5g}{unit}",
-        "high": f"the record goes up to {np.nanmax(y):.5g}{unit}",
-        "band": f"99 % of the record's |error| is below {_most(error):.3g}{unit}",
+    where = "" if extent.whole else f", in the {extent.rows} rows looked at"
+    where = (", in automatic" if extent.automatic_only else "") + where
+    told = {
+        "low": f"the record goes down to {np.min(extent.measurement):.5g}{unit}{where}",
+        "high": f"the record goes up to {np.max(extent.measurement):.5g}{unit}{where}",
     }
+    if len(extent.error):
+        most = float(np.quantile(np.abs(extent.error), 0.99))
+        told["band"] = f"99 % of the record's |error| is below {most:.3g}{unit}{where}"
+    return told
 
 
-def _most(error: FloatArray) -> float:
-    return float(np.nanquantile(np.abs(error), 0.99))
+def _extent(found: Survey) -> Extent:
+    if found.extent is None:
+        raise ValueError("a log without roles has no extent")
+    return found.extent
 
 
 def other_columns(found: Survey) -> list[Column]:

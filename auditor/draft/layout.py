@@ -51,7 +51,7 @@ def find_long(columns: Sequence[Column], time: str) -> Long | None:
         value=value.name,
         quality=quality,
         tags=len(found),
-        columns=tuple(_of_tag(tag, value, name) for name in found[:MOST_TAGS]),
+        columns=tuple(of_tag(tag, value, name) for name in found[:MOST_TAGS]),
     )
 
 
@@ -66,7 +66,8 @@ def _tags(column: Column) -> list[str]:
     return [pair["values"] for pair in ordered if pair["counts"] >= LEAST_ROWS]
 
 
-def _of_tag(tag: Column, value: Column, name: str) -> Column:
+def of_tag(tag: Column, value: Column, name: str) -> Column:
+    """Return the values of one tag as a column on the rows of the log, empty in the rows of the others."""
     mine = pc.fill_null(pc.equal(tag.cells, name), False)
     rows = np.asarray(mine.to_numpy(), dtype=np.bool_)
     numbers = np.where(rows, value.numbers, np.nan)

@@ -14,6 +14,7 @@ import pyarrow.parquet
 
 from auditor.draft.dress import Dress, encoding_of, look_at
 from auditor.errors import LogError, Problem
+from auditor.logs.files import nearest_log
 
 HEAD = 256 * 1024
 PART = 5 * 1024 * 1024
@@ -66,14 +67,21 @@ def look(path: Path) -> Peek:
     LogError
         When there is no such file, it is empty, or it is neither a text table nor Parquet.
     """
-    files = _files(path)
+    files = files_of(path)
     chosen = [files[n] for n in sorted({0, len(files) // 2, len(files) - 1})]
     if _first_bytes(chosen[0], 4) == b"PAR1":
         return _parquet(chosen, whole=len(chosen) == len(files))
     return _text(chosen, whole=len(chosen) == len(files))
 
 
-def _files(path: Path) -> list[Path]:
+def files_of(path: Path) -> list[Path]:
+    """Return the files of a log, in the order of their names.
+
+    Raises
+    ------
+    LogError
+        When there is none.
+    """
     if path.is_dir():
         found = sorted(p for p in path.rglob("*") if p.is_file() and p.suffix.lower() in (".parquet", ".csv", ".txt"))
     elif path.exists():
@@ -81,7 +89,9 @@ def _files(path: Path) -> list[Path]:
     else:
         found = sorted(Path(name) for name in glob.glob(str(path)))
     if not found:
-        raise LogError(_refusal(path, "there is no such log", "nothing", "check the path"))
+        close = nearest_log(path)
+        do = f'did you mean "{close}"?' if close else "check the path"
+        raise LogError(_refusal(path, "there is no such log", "nothing", do))
     return found
 
 
@@ -153,18 +163,19 @@ def _decoded(data: bytes, encoding: str) -> str:
 
 
 def _first_bytes(path: Path, count: int) -> bytes:
-    with gzip.open(path) if _is_packed(path) else path.open("rb") as file:
+    with gzip.open(path) if is_packed(path) else path.open("rb") as file:
         return bytes(file.read(count))
 
 
-def _is_packed(path: Path) -> bool:
+def is_packed(path: Path) -> bool:
+    """Return True for a file packed with gzip."""
     with path.open("rb") as file:
         return file.read(2) == GZIP
 
 
 def _chunks(files: Sequence[Path], dress: Dress) -> Iterator[str]:
     """Yield whole lines of the body: everything of a small file, else its beginning, middle and end."""
-    if len(files) > 1 or _is_packed(files[0]) or files[0].stat().st_size <= 3 * PART:
+    if len(files) > 1 or is_packed(files[0]) or files[0].stat().st_size <= 3 * PART:
         for path in files:
             text = _decoded(_first_bytes(path, 3 * PART // len(files)), dress.encoding)
             yield _without_first_lines(text, dress.body)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -14,16 +15,18 @@ from auditor.draft.law import extremes
 # The usual ranges of a command, and the unit that goes with each.
 USUAL = ((0.0, 1.0, "1"), (4.0, 20.0, "mA"), (0.0, 100.0, "%"))
 SLACK = 0.02
+STOOD = 0.005
 
 
 @dataclass(frozen=True, slots=True)
 class RangeGuess:
-    """The actuator's limits; None where the log does not show them."""
+    """The actuator's limits, each with its reason; None where the log does not show them."""
 
     low: float | None
     high: float | None
     reason: str
     sure: str
+    high_reason: str = "see low"
 
 
 def actuator_range(values: FloatArray, unit: str) -> RangeGuess:
@@ -41,17 +44,51 @@ def actuator_range(values: FloatArray, unit: str) -> RangeGuess:
     stays = tuple(extremes(values))
     usual = next((u for u in USUAL if _fits(u, least, most, unit)), None)
     if usual is not None:
-        low, high = usual[:2]
-        reached = any(min(abs(end - low), abs(end - high)) <= SLACK * (high - low) for end in stays)
-        sure = SURE if unit and reached else LIKELY if unit or reached else CHECK
-        stood = " and stood at a limit" if reached else ""
-        return RangeGuess(low, high, f"{went}{stood}; {low:g}…{high:g} is the usual range around that", sure)
+        return _with_usual(known, usual, unit, stays)
     if stays:
         low_end = least if least in stays else None
         high_end = most if most in stays else None
         ends = " and ".join(f"{end:.5g}" for end in stays)
         return RangeGuess(low_end, high_end, f"{went} and stood at {ends} for at least 1 % of the time", CHECK)
     return RangeGuess(None, None, f"{went} and never stood at a limit", CHECK)
+
+
+def _with_usual(known: FloatArray, usual: tuple[float, float, str], unit: str, stays: Sequence[float]) -> RangeGuess:
+    """Take each end at which the actuator stood, and the end of the usual range where it stood at none."""
+    low, high = usual[:2]
+    least, most = float(known.min()), float(known.max())
+    reached = any(min(abs(end - low), abs(end - high)) <= SLACK * (high - low) for end in stays)
+    at_least, at_most = (_stood(known, end) for end in (least, most))
+    went = f"it went from {least:.5g} to {most:.5g}"
+    known_unit = bool(unit)
+    clear = reached or at_least is not None or at_most is not None
+    sure = SURE if known_unit and reached else LIKELY if known_unit or clear else CHECK
+    around = f"{low:g}…{high:g} is the usual range around that"
+    low_reason = f"{went}; {around}" if at_least is None else f"{went} and {at_least}"
+    high_reason = at_most or ("see low" if at_least is None else around)
+    return RangeGuess(
+        low if at_least is None else least,
+        high if at_most is None else most,
+        low_reason,
+        sure,
+        high_reason=high_reason,
+    )
+
+
+def _stood(known: FloatArray, end: float) -> str | None:
+    """Say how often a signal stood exactly at its smallest or largest value, None when it did not noticeably.
+
+    A stop gathers rows: a coarsely stored signal without one is at its last step more seldom than at the one before.
+    """
+    rows = known == end
+    share = float(np.mean(rows))
+    inner = known[~rows]
+    if share < STOOD or not len(inner):
+        return None
+    beside = inner[np.argmin(np.abs(inner - end))]
+    if share <= float(np.mean(known == beside)):
+        return None
+    return f"stood at exactly {end:.5g} in {100 * share:.1f} % of the rows, which is taken as its limit"
 
 
 def _fits(usual: tuple[float, float, str], least: float, most: float, unit: str) -> bool:

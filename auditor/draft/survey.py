@@ -7,14 +7,18 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
+import pyarrow as pa
+import pyarrow.compute as pc
 
 from auditor.arrays import BoolArray, FloatArray
-from auditor.draft.clock import Clock, Order, Zone, find_clock, order_of, zone_of
+from auditor.draft.clock import Clock, Order, Zone, find_clock, is_newest_first, order_of, zone_of
 from auditor.draft.columns import Column, columns_of, part_starts
+from auditor.draft.extent import Extent, extent_of
 from auditor.draft.grid import even
 from auditor.draft.layout import Long, find_long
 from auditor.draft.peek import Peek, look
 from auditor.draft.roles import Roles, find_roles, strongest
+from auditor.draft.whole import whole_columns
 from auditor.draft.words import AUTOMATIC, names, plain
 
 
@@ -46,6 +50,8 @@ class Survey:
     grid : ndarray, shape (N, m)
         The candidates on an even clock, in automatic operation where a mode is known.
     roles : Roles or None
+    extent : Extent or None
+        The rows that tell how far the signals went; None without roles.
     """
 
     peek: Peek
@@ -58,6 +64,7 @@ class Survey:
     candidates: tuple[Column, ...]
     grid: FloatArray
     roles: Roles | None
+    extent: Extent | None
 
     def written(self, name: str) -> str | None:
         """Return the name by which the log knows a column, empty where it has none, None where two have the same."""
@@ -86,6 +93,7 @@ def survey(path: Path) -> Survey:
     mode = find_mode(signals)
     candidates = _candidates(signals, mode)
     grid, use = _grid(candidates, mode, signals, clock, order, starts)
+    roles = find_roles([c.name for c in candidates], grid, use) if len(candidates) > 1 else None
     return Survey(
         peek=peek,
         columns=columns,
@@ -96,7 +104,36 @@ def survey(path: Path) -> Survey:
         mode=mode,
         candidates=candidates,
         grid=grid,
-        roles=find_roles([c.name for c in candidates], grid, use) if len(candidates) > 1 else None,
+        roles=roles,
+        extent=_extent(path, peek, clock, long, mode, signals, candidates, roles),
+    )
+
+
+def _extent(
+    path: Path,
+    peek: Peek,
+    clock: Clock | None,
+    long: Long | None,
+    mode: ModeFound | None,
+    signals: Sequence[Column],
+    candidates: Sequence[Column],
+    roles: Roles | None,
+) -> Extent | None:
+    """Take the three signals and the mode from the whole log where that is possible, else from what was looked at."""
+    if roles is None:
+        return None
+    names = [candidates[n].name for n in (roles.measurement, roles.actuator)]
+    setpoint = None if roles.setpoint is None else candidates[roles.setpoint].name
+    others = [name for name in (setpoint, mode.column if mode else None) if name is not None]
+    everything = whole_columns(path, peek, [*names, *others], long)
+    columns = {column.name: column for column in (signals if everything is None else everything)}
+    return extent_of(
+        measurement=columns[names[0]].numbers,
+        actuator=columns[names[1]].numbers,
+        setpoint=columns[setpoint].numbers if setpoint else None,
+        automatic=_automatic(mode, list(columns.values())) if mode else None,
+        newest_first=clock is not None and is_newest_first(clock.ns),
+        whole=peek.whole or everything is not None,
     )
 
 
@@ -179,5 +216,7 @@ def _grid(
 def _automatic(mode: ModeFound, signals: Sequence[Column]) -> FloatArray:
     """Return 1 in automatic operation, 0 otherwise, NaN where the cell is empty; shape (rows,)."""
     column = next(signal for signal in signals if signal.name == mode.column)
-    cells = [None if cell is None else str(cell) for cell in column.cells.to_pylist()]
-    return np.array([np.nan if cell is None else float(cell in mode.automatic) for cell in cells])
+    coded = pc.dictionary_encode(pa.chunked_array([pa.concat_arrays(column.cells.chunks)]))
+    words, codes = coded.chunk(0).dictionary.to_pylist(), coded.chunk(0).indices
+    means = np.array([*(float(str(word) in mode.automatic) for word in words), np.nan])
+    return np.asarray(means[np.asarray(codes.fill_null(len(words)).to_numpy(zero_copy_only=False))])

@@ -15,7 +15,26 @@ from numba import types
 from auditor.arrays import FloatArray, IntArray
 from auditor.kernels import rows as R
 from auditor.kernels.control import begin, choices_of, move, run_lane, settings_of
+from auditor.kernels.deviation import advance, occupied, recall
+from auditor.kernels.device import advance_device, correct, predict
 from auditor.kernels.jit import RULE_TYPE, compiled, compiled_as
+
+
+@compiled
+def lane_arrays(n: int, lanes: int, ring: int, memory_rows: int) -> Any:
+    """State of all lanes at rest: past and acting δ, dx and its successor, what a rule sees, the controllers."""
+    signals = (R.SIGNALS, lanes)
+    return (
+        np.zeros((ring, lanes)), np.zeros((2, lanes)), np.zeros((n, lanes)), np.zeros((n, lanes)), np.zeros(signals),
+        np.zeros(signals), np.zeros((memory_rows, lanes)), np.zeros((R.CONTROL_ROWS, lanes)),
+    )  # fmt: skip
+
+
+@compiled
+def device_arrays(n: int, lanes: int, ring: int) -> Any:
+    """State of the devices' models at rest: state and successor, offset and load, and past positions."""
+    state = (2 * n, lanes)
+    return np.zeros(state), np.zeros(state), np.zeros((2, lanes)), np.zeros((ring, lanes))
 
 
 @compiled
@@ -59,67 +78,6 @@ def observe(
         now[R.ERROR, lane] = r - value
     if now[R.SETPOINT, 0] != r:
         now[R.SETPOINT, :] = r
-
-
-@compiled
-def predict(now: FloatArray, device: FloatArray, offset: FloatArray, C: FloatArray) -> None:
-    """ŷ of the device's model: its state (rows 0…n−1 of `device`) seen through C, plus the offset set at updates."""
-    for lane in range(now.shape[1]):
-        now[R.PREDICTED, lane] = offset[0, lane]
-    for i in range(len(C)):
-        c = C[i]
-        for lane in range(now.shape[1]):
-            now[R.PREDICTED, lane] += c * device[i, lane]
-
-
-@compiled
-def correct(
-    now: FloatArray, which: IntArray, updates: int, device: FloatArray, offset: FloatArray, C: FloatArray, floor: float
-) -> None:
-    """At an update both ends learn y: set the offset, and blame a constant load for what the model missed.
-
-    The missed part divided by the plant's response to a unit load since the last update is the load's step
-    (Lunze & Lehmann 2010, disturbance estimator); the response is floored so that noise is not amplified.
-    """
-    n = len(C)
-    for at in range(updates):
-        lane = which[at]
-        missed = now[R.MEASUREMENT, lane] - now[R.PREDICTED, lane]
-        response = 0.0
-        for i in range(n):
-            response += C[i] * device[n + i, lane]
-            device[n + i, lane] = 0.0
-        response = response if abs(response) > abs(floor) else floor
-        offset[0, lane] += missed
-        offset[1, lane] += missed / response
-
-
-@compiled
-def advance_device(
-    device: FloatArray, following: FloatArray, offset: FloatArray, new: FloatArray, old: FloatArray, u0: float, t: int,
-    A: FloatArray, B0: FloatArray, B1: FloatArray, delay: int,
-) -> None:  # fmt: skip
-    """One period of the device's model, driven by the positions since the span began and by its load estimate.
-
-    `new` and `old` are the positions d and d + 1 samples ago; before the span the model rests.
-    """
-    n, lanes = len(B0), device.shape[1]
-    for i in range(n):
-        b0, b1 = B0[i], B1[i]
-        for lane in range(lanes):
-            recent = new[lane] - u0 if t >= delay else 0.0
-            before = old[lane] - u0 if t > delay else 0.0
-            following[i, lane] = b0 * (recent + offset[1, lane]) + b1 * (before + offset[1, lane])
-            following[n + i, lane] = b0 + b1
-        for j in range(n):
-            a = A[i, j]
-            if a != 0.0:
-                for lane in range(lanes):
-                    following[i, lane] += a * device[j, lane]
-                    following[n + i, lane] += a * device[n + j, lane]
-    for i in range(2 * n):
-        for lane in range(lanes):
-            device[i, lane] = following[i, lane]
 
 
 @compiled
@@ -249,48 +207,6 @@ def note(
         out_y[lane] = now[R.MEASUREMENT, lane]
 
 
-@compiled
-def recall(past: FloatArray, t: int, delay: IntArray, acting: FloatArray) -> None:
-    """Fetch δ[k−d] and δ[k−d−1] of every lane; `past` has a power of two of slots, so that a mask wraps around."""
-    mask = past.shape[0] - 1
-    for lane in range(past.shape[1]):
-        late = t - delay[lane]
-        acting[0, lane] = past[np.uint64(late & mask), lane]
-        acting[1, lane] = past[np.uint64((late - 1) & mask), lane]
-
-
-@compiled
-def occupied(A: FloatArray) -> Any:
-    """1 where any lane has a non-zero entry, shape (n, n): chains of lags are triangular, and zeros need no work."""
-    n = A.shape[0]
-    used = np.zeros((n, n), dtype=np.uint8)
-    for i in range(n):
-        for j in range(n):
-            for lane in range(A.shape[2]):
-                used[i, j] = 1 if A[i, j, lane] != 0.0 else used[i, j]
-    return used
-
-
-@compiled
-def advance(
-    used: Any, A: FloatArray, B0: FloatArray, B1: FloatArray, acting: FloatArray, dx: FloatArray, following: FloatArray
-) -> None:
-    """dx⁺ = A dx + B0 δ[k−d] + B1 δ[k−d−1] (2.1); δ is zero before the span."""
-    n, lanes = dx.shape
-    for i in range(n):
-        first = used[i, 0] == 1
-        for lane in range(lanes):
-            driven = B0[i, lane] * acting[0, lane] + B1[i, lane] * acting[1, lane]
-            following[i, lane] = driven + A[i, 0, lane] * dx[0, lane] if first else driven
-        for j in range(1, n):
-            if used[i, j] == 1:
-                for lane in range(lanes):
-                    following[i, lane] += A[i, j, lane] * dx[j, lane]
-    for i in range(n):
-        for lane in range(lanes):
-            dx[i, lane] = following[i, lane]
-
-
 _F1, _F2, _F3 = types.float64[::1], types.float64[:, ::1], types.float64[:, :, ::1]
 _I1, _I2 = types.int64[::1], types.int64[:, ::1]
 _IN1 = types.Array(types.float64, 1, "C", readonly=True)
@@ -332,22 +248,11 @@ def replay_span(
     used = occupied(A)
     quiet = leading_zeros(column)
     between = shape[R.BETWEEN_RUN] == 1 or shape[R.FOLLOW_SETPOINT] == 1
-    dn = len(dC)
     ring = 2
     while ring < max(delay.max(), d_delay) + 2:
         ring *= 2
-    past = np.zeros((ring, lanes))
-    acting = np.zeros((2, lanes))
-    dx = np.zeros((n, lanes))
-    following = np.zeros((n, lanes))
-    device = np.zeros((2 * dn, lanes))
-    device_next = np.zeros((2 * dn, lanes))
-    positions = np.zeros((ring, lanes))
-    offset = np.zeros((2, lanes))
-    now = np.zeros((R.SIGNALS, lanes))
-    sent = np.zeros((R.SIGNALS, lanes))
-    memory = np.zeros((memory_rows, lanes))
-    control = np.zeros((R.CONTROL_ROWS, lanes))
+    past, acting, dx, following, now, sent, memory, control = lane_arrays(n, lanes, ring, memory_rows)
+    device, device_next, offset, positions = device_arrays(len(dC), lanes, ring)
     since = np.zeros(lanes, dtype=np.int64)
     # A controller that runs on messages alone has run when the last one came.
     apart = between or shape[R.LINK_ACTUATOR] == 1

@@ -80,13 +80,19 @@ def align(log: Log, loop: Loop) -> Record:
     traces = [_trace(columns[role], signal, role, grid) for role, signal in roles_of(loop).items()]
     pairs = zip(others, loop.signals.disturbances, strict=True)
     traces += [_trace(column, signal, "disturbance", grid) for column, signal in pairs]
-    manual, modes = _manual(log, loop, order, grid)
+    manual, modes, unmet = _manual(log, loop, order, grid)
     excluded = _excluded(loop, grid)
     cause = causes(traces[0], traces[1], traces[2], manual, excluded)
     samples = bridge_samples(loop.period, 0.0)
     spans = spans_of(cause == 0, samples, cut=(cause == MANUAL) | (cause == EXCLUDED))
     marks = _Marks(
-        manual=manual, modes=modes, excluded=excluded, cause=cause, spans=spans, bridge=samples * loop.period
+        manual=manual,
+        modes=modes,
+        unmet=unmet,
+        excluded=excluded,
+        cause=cause,
+        spans=spans,
+        bridge=samples * loop.period,
     )
     seen = _evidence(log, loop, order, grid, traces, marks)
     return _record(log, loop, grid, seen, spans)
@@ -135,11 +141,11 @@ def _moves(order: Order, actuator: Column | None) -> IntArray:
     return np.asarray(stamps[1:][values[1:] != values[:-1]])
 
 
-def _manual(log: Log, loop: Loop, order: Order, grid: Grid) -> tuple[BoolArray, Mapping[str, int]]:
-    """Return where the loop was not in automatic, and the modes met."""
+def _manual(log: Log, loop: Loop, order: Order, grid: Grid) -> tuple[BoolArray, Mapping[str, int], tuple[str, ...]]:
+    """Return where the loop was not in automatic, the modes met, and the stated ones when none of them was."""
     mode = loop.signals.mode
     if mode is None:
-        return np.zeros(grid.count, dtype=np.bool_), MappingProxyType({})
+        return np.zeros(grid.count, dtype=np.bool_), MappingProxyType({}), ()
     cells = log.texts[mode.column] if mode.column in log.texts else log.channels[mode.column]
     return read_modes(cells, mode.automatic, order, grid)
 
@@ -161,6 +167,7 @@ class _Marks:
 
     manual: BoolArray
     modes: Mapping[str, int]
+    unmet: tuple[str, ...]
     excluded: BoolArray
     cause: npt.NDArray[np.int8]
     spans: tuple[Span, ...]
@@ -189,6 +196,7 @@ def _evidence(log: Log, loop: Loop, order: Order, grid: Grid, traces: list[Trace
         manual=marks.manual,
         excluded=marks.excluded,
         modes=marks.modes,
+        unmet=marks.unmet,
         reasons=tuple(stretch.why for stretch in loop.log.exclude),
         cause=marks.cause,
         spans=np.array([(span.start, span.stop) for span in marks.spans], dtype=np.int64).reshape(-1, 2),

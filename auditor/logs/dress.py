@@ -130,9 +130,29 @@ def _stated_encoding(raw: bytes, complete: bool, label: str, stated: str) -> str
     try:
         codecs.getincrementaldecoder(stated)().decode(raw, complete)
     except UnicodeError as error:
-        what, do = f"The log has letters that are not {stated}.", "correct [log] encoding, or leave it out"
-        raise LogError(Problem(what=what, where=label, found=str(error), do=do)) from None
+        raise LogError(_does_not_fit(error, raw, complete, label, stated)) from None
     return codecs.lookup(stated).name
+
+
+def _does_not_fit(error: UnicodeError, raw: bytes, complete: bool, label: str, stated: str) -> Problem:
+    """Say where the first letter is that the stated encoding does not have, and which encoding would do."""
+    found, where = "no text in that encoding", label
+    if isinstance(error, UnicodeDecodeError):
+        line = raw[: error.start].count(b"\n")
+        start, end = raw.rfind(b"\n", 0, error.start) + 1, raw.find(b"\n", error.start)
+        around = raw[start : end if end > 0 else None].decode("cp1252", "replace").strip()
+        found, where = f"byte 0x{raw[error.start]:02x} in: {around[:60]}", f"{label}, line {line + 1}"
+    fits = _encoding(raw, complete, label, None)
+    do = "leave out [log] encoding, so that the log is looked at"
+    if codecs.lookup(fits).name != codecs.lookup(stated).name:
+        do = f'state encoding = "{fits}" in [log], or leave it out'
+    return Problem(
+        what=f"The log is not written in the stated encoding {stated}.",
+        where=where,
+        found=found,
+        expected=f'text in {stated}, as [log] encoding = "{stated}" says',
+        do=do,
+    )
 
 
 def _check_stated(source: LogSource, label: str) -> None:

@@ -17,7 +17,7 @@ from auditor.errors import LogError, Problem, raise_all
 from auditor.logs.packed import UNREADABLE, ZIP, Member, Place, head, members
 from auditor.logs.record import InputFile
 from auditor.loop import LogSource
-from auditor.text import nearest
+from auditor.text import nearest_file
 
 PARQUET_SUFFIXES = (".parquet", ".pq", ".parq")
 TEXT_SUFFIXES = tuple(name + packing for packing in ("", ".gz", ".zst") for name in (".csv", ".tsv", ".txt"))
@@ -124,11 +124,23 @@ def _missing(path: Path, entry: str) -> Problem:
         return Problem(
             what="The log does not exist, and neither does its folder.", where=entry, do="correct [log] path"
         )
-    names = sorted(p.name for p in path.parent.iterdir())
-    close = next((n for n in names if n.casefold() == path.name.casefold()), None) or nearest(path.name, names)
+    close = nearest_log(path)
     do = f'did you mean "{close}"?' if close else "correct [log] path; it starts from the loop file's folder"
-    found = ", ".join(names[:8]) or "an empty folder"
-    return Problem(what="The log does not exist.", where=entry, found=found, do=do)
+    names = _logs_in(path.parent)
+    found = f"logs in that folder: {', '.join(names[:8]) or 'none'}"
+    expected = "a file, a folder or a pattern, from the loop file's folder"
+    return Problem(what="The log does not exist.", where=entry, found=found, expected=expected, do=do)
+
+
+def nearest_log(path: Path) -> str | None:
+    """Return the log beside a path that does not exist whose name is close to its own; None when there is none."""
+    names = _logs_in(path.parent) if path.parent.is_dir() else []
+    return next((n for n in names if n.casefold() == path.name.casefold()), None) or nearest_file(path.name, names)
+
+
+def _logs_in(folder: Path) -> list[str]:
+    suffixes = PARQUET_SUFFIXES + TEXT_SUFFIXES + ARCHIVE_SUFFIXES
+    return sorted(p.name for p in folder.iterdir() if p.name.lower().endswith(suffixes) and p.is_file())
 
 
 def expand(path: Path, folder: Path) -> tuple[Place, ...]:

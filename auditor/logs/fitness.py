@@ -6,6 +6,7 @@ from collections.abc import Mapping
 
 from auditor.arrays import IntArray
 from auditor.errors import CannotAnswerError, Problem, raise_all
+from auditor.logs.findings.base import Finding
 from auditor.logs.findings.constant_actuator import never_moves
 from auditor.logs.findings.wording import moment
 from auditor.logs.grid import typical_spacing
@@ -98,13 +99,27 @@ def require_usable(record: Record) -> None:
     usable = record.in_span & record.valid
     count = int(usable.sum())
     problems = []
-    if count < FEWEST_SAMPLES:
+    manual = next((f for f in record.findings if f.kind == "manual" and f.weight == "stops the answer"), None)
+    if manual is not None:
+        problems.append(_never_automatic(manual))
+    elif count < FEWEST_SAMPLES:
         problems.append(_too_short(record, count))
     elif never_moves(record.u[usable]):
         problems.append(_standing_still(record, "actuator", float(record.u[usable][0]), _BUMP))
     if count >= FEWEST_SAMPLES and never_moves(record.y[usable]):
         problems.append(_standing_still(record, "measurement", float(record.y[usable][0]), _SENSOR))
     raise_all(CannotAnswerError, problems)
+
+
+def _never_automatic(manual: Finding) -> Problem:
+    """Say which modes the log holds instead of automatic."""
+    return Problem(
+        what="no sample of the log is in automatic",
+        where="signals.mode.automatic",
+        found=manual.detail,
+        expected="values that the mode column holds while the loop is in automatic",
+        do="state them as the log writes them, capital letters too; leave [signals.mode] out if it is always automatic",
+    )
 
 
 def _too_short(record: Record, count: int) -> Problem:

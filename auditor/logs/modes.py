@@ -40,7 +40,7 @@ def _same(one: str, other: str) -> bool:
 
 def read_modes(
     cells: npt.NDArray[Any], automatic: Sequence[Any], order: Order, grid: Grid
-) -> tuple[BoolArray, Mapping[str, int]]:
+) -> tuple[BoolArray, Mapping[str, int], tuple[str, ...]]:
     """Return where the loop was not in automatic.
 
     Parameters
@@ -57,6 +57,8 @@ def read_modes(
         True where the mode is another one, or not known because none was stored yet.
     others : mapping of str to int
         The other values met, with their rows.
+    unmet : tuple of str
+        The values that mean automatic when none of them occurs, else empty.
     """
     codes, names = pd.factorize(order.arrange(cells), use_na_sentinel=True)
     kinds = [_UNKNOWN if str(name).strip() == "" else int(is_automatic(name, automatic)) for name in names]
@@ -64,7 +66,8 @@ def read_modes(
     tally = np.bincount(codes[codes >= 0], minlength=len(names))
     others = {str(name): int(tally[i]) for i, name in enumerate(names) if kinds[i] == 0}
     stamps = rows if order.first is None else np.minimum.reduceat(rows, order.first)
-    return _not_automatic(stamps, grid), MappingProxyType(others)
+    unmet = () if 1 in kinds else tuple(_plain(value) for value in automatic)
+    return _not_automatic(stamps, grid), MappingProxyType(others), unmet
 
 
 def _not_automatic(stamps: npt.NDArray[np.int8], grid: Grid) -> BoolArray:

@@ -14,6 +14,7 @@ from auditor.logs.dress import Dress, look
 from auditor.logs.findings.base import Finding
 from auditor.logs.packed import UNREADABLE, Place, open_text, stream
 from auditor.logs.raw_table import RawTable, Wanted, column_problems, time_columns
+from auditor.logs.stated import stated_amiss
 from auditor.loop import LogSource
 
 _BLOCK = 4 * 1024 * 1024
@@ -56,7 +57,10 @@ def read_csv(path: Place, label: str, source: LogSource, wanted: Wanted) -> RawT
         10 rows and 1 % of the rows have not the usual number of cells.
     """
     dress = look(path, label, source, wanted)
-    raise_all(LogError, column_problems(wanted, dress.names, label) or _shape_problems(dress, wanted, label))
+    missing = column_problems(wanted, dress.names, label)
+    if len(missing) == len(wanted.names()):
+        missing = stated_amiss(path, label, source, wanted, dress) or missing
+    raise_all(LogError, missing or _shape_problems(dress, wanted, label))
     odd = _OddRows()
     try:
         table, dress = _parse(path, dress, wanted, odd, stated=source.encoding is not None)
@@ -120,9 +124,21 @@ def _unreadable(error: Exception, dress: Dress, odd: _OddRows, label: str) -> Pr
     if odd.texts and "Expected" in str(error):
         return _too_odd(f"more than {_MOST_ROWS}", dress, odd, label)
     if isinstance(error, UnicodeError) or "UTF8" in str(error):
-        what = f"The log has letters that are not {dress.encoding}."
-        return Problem(what=what, where=label, found=_short(str(error)), do="state [log] encoding")
+        return _wrong_letters(error, dress, label)
     return Problem(what="The log cannot be read as a table.", where=label, found=_short(str(error)), do=_AGAIN)
+
+
+def _wrong_letters(error: Exception, dress: Dress, label: str) -> Problem:
+    found = "letters beyond the beginning of the file that are written in another way"
+    if isinstance(error, UnicodeDecodeError):
+        found = f"byte 0x{error.object[error.start]:02x} beyond the beginning of the file"
+    return Problem(
+        what=f"The log has letters that are not {dress.encoding}.",
+        where=label,
+        found=found,
+        expected=f"text in {dress.encoding} throughout",
+        do='state the encoding the log was exported with in [log], such as encoding = "cp1252"',
+    )
 
 
 def _too_odd(count: str, dress: Dress, odd: _OddRows, label: str) -> Problem:

@@ -30,9 +30,11 @@ from auditor.loopfile.lines import KeyPath, key_lines, line_of
 from auditor.loopfile.mend import mended, relevant
 from auditor.loopfile.schema import REQUIRED, TABLES, RuleTable, Table
 from auditor.loopfile.settings import read_settings
-from auditor.text import nearest
+from auditor.text import nearest_file
 
 _T = TypeVar("_T", bound=Table)
+# A comma between digits where one number is expected; a number never begins with a nought before other digits.
+_DECIMAL_COMMA = re.compile(r"=\s*([-+]?\d+),(\d+)(?=\s*(?:[,}#]|$))|(?<=[\[,\s])([-+]?\d+),(0\d+)\b")
 _AT_LINE = re.compile(r"\s*\(at (?:line (\d+), column (\d+)|end of document)\)")
 
 
@@ -104,9 +106,9 @@ def _text(path: Path) -> str:
         data = path.read_bytes()
     except FileNotFoundError:
         names = [p.name for p in path.parent.glob("*.toml")] if path.parent.is_dir() else []
-        near = nearest(path.name, names)
+        near = nearest_file(path.name, names)
         do = f'did you mean "{near}"?' if near else "check the path"
-        raise LoopFileError(_unreadable(path, "does not exist", "nothing", do)) from None
+        raise LoopFileError(_unreadable(path, "does not exist", _there(names), do)) from None
     except OSError as error:
         raise LoopFileError(_unreadable(path, "cannot be opened", error.strerror or str(error), "check it")) from None
     try:
@@ -124,6 +126,10 @@ def _text(path: Path) -> str:
         raise LoopFileError(problem) from None
 
 
+def _there(names: list[str]) -> str:
+    return f"loop files in that folder: {', '.join(sorted(names)[:8]) or 'none'}"
+
+
 def _unreadable(path: Path, what: str, found: str, do: str) -> Problem:
     return Problem(what=f"the loop file {what}", where=str(path), found=found, expected="a TOML file", do=do)
 
@@ -138,6 +144,11 @@ def _syntax(message: str, path: Path, text: str) -> Problem:
         do = r"a backslash in a path is written 'C:\data\log.csv' (single quotes) or with / instead"
     where = f"{path}, line {line}" + (f", column {at[2]}" if at and at[2] else "")
     what = f"the loop file is not valid TOML: {_AT_LINE.sub('', message)}"
+    comma = _DECIMAL_COMMA.search(row)
+    if comma:
+        what = "the loop file has a number with a decimal comma"
+        do = f"use a point: {'.'.join(part for part in comma.groups() if part)}"
+        return Problem(what=what, where=where, found=row, expected="numbers with a decimal point", do=do)
     return Problem(what=what, where=where, found=row, expected="TOML", do=do)
 
 

@@ -10,6 +10,9 @@ from pathlib import Path
 import pytest
 
 from auditor.cli.app import run
+from auditor.cli.replay import parse
+from auditor.cli.screen import table_with_notes
+from auditor.errors import CommandError
 from tests.truth import scene, write_log
 
 RULES = '[[rules]]\nrule = "send-on-delta"\ndelta = [0.008, 0.02]\n'
@@ -202,3 +205,32 @@ def test_a_fault_of_the_program_is_one_and_asks_for_a_report(monkeypatch, capsys
     told = capsys.readouterr().err
     assert "please report it" in told
     assert "ZeroDivisionError" in told
+
+
+def test_a_decimal_comma_in_a_setting_is_told() -> None:
+    with pytest.raises(CommandError, match=r"use a point: 0\.1"):
+        parse(["delta=0,1"])
+
+
+def test_demo_refuses_a_folder_with_another_loop(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    (tmp_path / "mine.toml").write_text("")
+    assert run(["demo", "canal-pool", "--out", str(tmp_path)]) == 2
+    assert "mine.toml" in capsys.readouterr().err
+    assert [path.name for path in tmp_path.iterdir()] == ["mine.toml"]
+
+
+def test_check_tells_a_wrong_rule_before_the_log_is_read(loopfile: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    broken = loopfile.with_name("broken.toml")
+    broken.write_text(loopfile.read_text() + '\n[[rules]]\nrule = "send-on-deltaa"\ndelta = 0.1\n')
+    assert run(["check", str(broken)]) == 3
+    told = capsys.readouterr().err
+    assert "send-on-deltaa" in told
+    assert "reading the log" not in told
+
+
+def test_a_narrow_last_column_goes_below_its_row() -> None:
+    rows = [["k" * 30, "v" * 30, "a reason in many words " * 5]]
+    shown = table_with_notes(["key", "guess", "why"], rows).splitlines()
+    assert max(map(len, shown)) <= 80
+    assert shown[3].startswith("    a reason")
+    assert table_with_notes(["key", "why"], [["k", "a reason"]]).splitlines()[2] == "k    a reason"

@@ -449,3 +449,14 @@ def test_an_actuator_that_moves_in_manual_only_does_not_count_as_moving():
     assert "constant-actuator" in kinds(record)
     with pytest.raises(CannotAnswerError, match="actuator never moves"):
         require_usable(record)
+
+
+def test_a_log_never_in_the_stated_mode_names_the_modes_it_holds():
+    loop = pool_loop(mode=Mode(column="mode", automatic=("Auto",)))
+    record = align(with_mode(pool_log(), np.array(["AUTO"] * 1500 + ["HAND"] * 500, dtype=object)), loop)
+    with pytest.raises(CannotAnswerError) as caught:
+        require_usable(record)
+    (problem,) = caught.value.problems
+    assert problem.where == "signals.mode.automatic"
+    assert '"Auto" occurs (did you mean "AUTO"?)' in problem.found
+    assert '"AUTO" (1500 rows), "HAND" (500 rows)' in problem.found

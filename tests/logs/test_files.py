@@ -158,3 +158,12 @@ def test_a_file_without_rights_is_refused(tmp_path: Path) -> None:
     (tmp_path / "log.csv").chmod(0)
     (problem,) = problems_of(tmp_path)
     assert "cannot be opened" in problem.what
+
+
+def test_only_logs_with_a_close_name_are_offered(tmp_path: Path) -> None:
+    for name in ("x.csv", "gone.png", "pool-7.csv"):
+        (tmp_path / name).write_text("time,level,gate\n")
+    (problem,) = problems_of(tmp_path, "gone.csv")
+    assert "did you mean" not in problem.do
+    assert "png" not in problem.found
+    assert problems_of(tmp_path, "pool7.csv")[0].do == 'did you mean "pool-7.csv"?'

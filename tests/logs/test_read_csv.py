@@ -114,6 +114,15 @@ def test_a_stated_encoding_that_does_not_fit_is_refused(tmp_path: Path) -> None:
     assert "encoding" in problem_of_text(tmp_path, written(), mode="mode", encoding="utf-16").do
 
 
+def test_a_wrong_encoding_is_told_with_its_line_and_one_that_fits(tmp_path: Path) -> None:
+    raw = "time,level,gate,mode\n2025-01-01T00:00:00Z,1,2,Störung\n".encode("cp1252")
+    problem = problem_of_text(tmp_path, raw, mode="mode", encoding="utf-8")
+    assert problem.where == "log.csv, line 2"
+    assert "0xf6" in problem.found
+    assert "utf-8" in problem.expected
+    assert 'encoding = "cp1252"' in problem.do
+
+
 def test_a_letter_far_down_may_show_the_encoding(tmp_path: Path) -> None:
     rows = "".join(f"2025-01-01T00:{k // 60:02}:{k % 60:02}Z,1,2,AUTO\n" for k in range(3000))
     raw = ("time,level,gate,mode\n" + rows).encode() + "2025-01-02T00:00:00Z,1,2,Störung\n".encode("cp1252")
@@ -276,6 +285,21 @@ def test_lines_of_many_lengths_are_refused(tmp_path: Path) -> None:
 
 
 # --- What cannot be used
+
+
+def test_a_stated_key_that_hides_every_column_is_blamed_first(tmp_path: Path) -> None:
+    text = "export of a pool\n" + written(";", ",")
+    problem = problem_of_text(tmp_path, text, mode="mode", skip_rows=0)
+    assert "skip_rows = 0" in problem.what
+    assert '"level"' in problem.expected
+    problem = problem_of_text(tmp_path, text, mode="mode", delimiter="|")
+    assert 'delimiter = "|"' in problem.what
+    assert "skip_rows, delimiter" in problem_of_text(tmp_path, text, mode="mode", delimiter="|", skip_rows=0).where
+    # A column that is missing all the same is named as well.
+    (tmp_path / "log.csv").write_text(text)
+    first, second = problems_of(tmp_path, mode="state", skip_rows=0)
+    assert "skip_rows = 0" in first.what
+    assert '"state"' in second.what
 
 
 def test_every_missing_column_is_named_at_once(tmp_path: Path) -> None:

@@ -105,6 +105,8 @@ class Evidence:
     manual, excluded : ndarray of bool, shape (N,)
     modes : mapping of str to int
         Values of the mode column that are not automatic, with their rows.
+    unmet : tuple of str
+        The stated automatic values when none of them occurs in the log, else empty.
     reasons : tuple of str
         The owner's reasons for the exclusions.
     cause : ndarray of int8, shape (N,)
@@ -138,6 +140,7 @@ class Evidence:
     cause: npt.NDArray[np.int8]
     spans: IntArray
     bridge: float
+    unmet: tuple[str, ...] = ()
 
     def trace(self, role: str) -> Trace:
         """Return the first signal with this role."""
