@@ -139,7 +139,7 @@ def _text(files: Sequence[Path], whole: bool) -> Peek:
     units = dress.units or ("",) * len(names)
     most = PART_ROWS * 3 // len(parts)
     complete = whole and len(files) == len(chunks) and all(part.num_rows <= most for part in parts)
-    complete &= all(path.stat().st_size <= 3 * PART // len(files) for path in files)
+    complete &= all(_is_short(path, 3 * PART // len(files)) for path in files)
     cut = tuple(part.slice(0, most) for part in parts)
     return Peek(parts=cut, written=written, units=units, dress=dress, whole=complete)
 
@@ -165,6 +165,13 @@ def _decoded(data: bytes, encoding: str) -> str:
 def _first_bytes(path: Path, count: int) -> bytes:
     with gzip.open(path) if is_packed(path) else path.open("rb") as file:
         return bytes(file.read(count))
+
+
+def _is_short(path: Path, most: int) -> bool:
+    """Return True for a file of at most `most` bytes, once unpacked."""
+    if is_packed(path):
+        return len(_first_bytes(path, most + 1)) <= most
+    return path.stat().st_size <= most
 
 
 def is_packed(path: Path) -> bool:

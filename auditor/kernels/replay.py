@@ -192,19 +192,22 @@ def remember(now: FloatArray, sent: FloatArray, since: IntArray, which: IntArray
 
 @compiled
 def note(
+    k: int,
     u: float,
+    slot: int,
     now: FloatArray,
     control: FloatArray,
     past: FloatArray,
     out_y: FloatArray,
     out_u: FloatArray,
 ) -> None:
-    """Write the sample down: row views of the history and of the results."""
-    for lane in range(len(past)):
-        away = control[R.DEVIATION, lane]
-        past[lane] = away
-        out_u[lane] = u + away
-        out_y[lane] = now[R.MEASUREMENT, lane]
+    """Write sample k down, in the history's slot and in the results."""
+    for lane in range(now.shape[1]):
+        past[slot, lane] = control[R.DEVIATION, lane]
+    for lane in range(now.shape[1]):
+        out_u[k, lane] = u + control[R.DEVIATION, lane]
+    for lane in range(now.shape[1]):
+        out_y[k, lane] = now[R.MEASUREMENT, lane]
 
 
 _F1, _F2, _F3 = types.float64[::1], types.float64[:, ::1], types.float64[:, :, ::1]
@@ -287,7 +290,7 @@ def replay_span(
         remember(now, sent, since, which, updates, out_updated[k])
         if not first:
             move(control, u[k], law)
-        note(u[k], now, control, past[t % ring], out_y[k], out_u[k])
+        note(k, u[k], t % ring, now, control, past, out_y, out_u)
         if apart:
             since_run += 1
         recall(past, t, delay, acting)
