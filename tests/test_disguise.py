@@ -56,12 +56,6 @@ area = 20.0
 delta = 0.03
 
 [[rules]]
-rule = "error-area"
-link = "actuator"
-area = 20.0
-delta = 2.0
-
-[[rules]]
 rule = "linear-prediction"
 delta = 0.01
 window = "10min"
