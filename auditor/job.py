@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
+
+import numpy as np
 
 from auditor.dangers import find_flags
 from auditor.dangers.base import Case as DangerCase
@@ -56,9 +59,9 @@ def replay_all(
         return find_flags(danger_case(bench, loop, model, parts, setting, lanes), index)
 
     outcomes = sweep(bench, loop, settings, parts, look, jobs=jobs, progress=progress)
-    curve = _curve(bench, loop, parts, outcomes, jobs, progress)
+    curves = _curves(bench, loop, parts, outcomes, jobs, progress)
     return Replayed(
-        replays=tuple(_compared(outcome, curve, model.trust) for outcome in outcomes),
+        replays=tuple(_compared(outcome, curves, model.trust) for outcome in outcomes),
         flags=tuple(flag for outcome in outcomes for flag in outcome.inspected),
     )
 
@@ -77,20 +80,52 @@ def danger_case(bench: Bench, loop: Loop, model: Model, parts: Parts, setting: S
     )
 
 
-def _curve(
+def _curves(
     bench: Bench, loop: Loop, parts: Parts, outcomes: Sequence[Outcome[tuple[Flag, ...]]], jobs: int, progress: Progress
-) -> ClockCurve:
-    usable = [o.replay.measures.updates for o in outcomes if o.replay.answerable] or [samples(parts.whole)]
-    every = divisors_for(min(usable), samples(parts.whole))
-    return clock_curve(bench, loop, parts, every, jobs=jobs, progress=progress)
+) -> dict[tuple[str, str], ClockCurve]:
+    """The clock on every link and way of running that a setting uses: a rule is held against its own kind."""
+    slowest: dict[tuple[str, str], float] = {}
+    for outcome in outcomes:
+        kind = _kind(outcome.replay)
+        slowest[kind] = max(slowest.get(kind, 2.0), _slowness(outcome, parts))
+    return {
+        (link, between): clock_curve(
+            bench,
+            loop,
+            parts,
+            divisors_for(1.0, math.ceil(ratio)),
+            link=link,
+            between=between,
+            jobs=jobs,
+            progress=progress,
+        )
+        for (link, between), ratio in slowest.items()
+    }
 
 
-def _compared(outcome: Outcome[tuple[Flag, ...]], curve: ClockCurve, model_trust: str) -> Replay:
+def _kind(replay: Replay) -> tuple[str, str]:
+    return replay.setting.link, replay.setting.between
+
+
+def _slowness(outcome: Outcome[tuple[Flag, ...]], parts: Parts) -> float:
+    """Samples per update on the part where the setting updates least; 1 for a setting that is not answered."""
+    if not outcome.replay.answerable:
+        return 1.0
+    spans = {"whole": parts.whole, "first": parts.first, "rest": parts.rest}
+    return max(samples(spans[p]) / max(1.0, float(np.min(outcome.counts[p]))) for p in outcome.counts)
+
+
+def _compared(
+    outcome: Outcome[tuple[Flag, ...]], curves: dict[tuple[str, str], ClockCurve], model_trust: str
+) -> Replay:
+    trusted = replace(outcome.replay, trust=_least(outcome.replay.trust, model_trust))
+    if trusted.setting.rule == "periodic":
+        return trusted  # one phase of the clock against the mean of its phases would say nothing
+    curve = curves[_kind(trusted)]
     found = {part: compare(curve, part, outcome.counts[part], outcome.squares[part]) for part in outcome.counts}
     whole = found["whole"]
     return replace(
-        outcome.replay,
-        trust=_least(outcome.replay.trust, model_trust),
+        trusted,
         against_periodic=whole.outcome,
         periodic_rms_error=whole.clock_rms,
         rms_difference90=whole.difference90,

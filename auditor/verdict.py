@@ -21,6 +21,9 @@ CAUTIONS = (
     "pressure-dependent demand) it does so here only through the model.",
 )
 
+OUTSIDE = 0.05
+"""Share of the counted time outside its limits from which the record says that the limits are not its own."""
+
 RESERVE = 0.9
 """A setting is chosen with the upper end of its error interval within this share of what is accepted: the rest of the
 record, and the year after, will not be kinder than the part it was chosen on."""
@@ -172,6 +175,13 @@ def _cannot_decide(case: Case) -> tuple[str, ...]:
     if not case.loop.limits.stated:
         missing = _missing(case)
         reasons.append(f"[limits] states no {missing}: it is the owner's, and without it no danger can be told.")
+    outside = case.baseline.outside_limits_s if case.baseline is not None else None
+    if outside is not None and outside > OUTSIDE * case.hours * 3600.0:
+        share = percent(outside / (case.hours * 3600.0))
+        reasons.append(
+            f"The record itself is outside the stated limits {share} of the time: check [limits] and the units before "
+            "anything is decided."
+        )
     if case.model is not None and case.hours < case.loop.accept.min_hours:
         reasons.append(
             f"{number(case.hours)} h can be counted after the warm-up; {number(case.loop.accept.min_hours)} h are "
@@ -217,7 +227,9 @@ def _why_switch(case: Case, chosen: int) -> tuple[str, ...]:
         f"Its RMS error is {number(replay.measures.rms_error)} {unit} (90 % interval {number(low)}…{number(high)}); "
         f"the record's is {number(record)} {unit}, and at most {number(case.max_rms)} {unit} is accepted.",
     ]
-    if replay.periodic_rms_error is not None:
+    if replay.periodic_rms_error is None:
+        reasons.append("No slowed-down clock with no more updates would have been stable.")
+    else:
         reasons.append(
             f"The best slowed-down clock with no more updates has {number(replay.periodic_rms_error)} {unit}."
         )

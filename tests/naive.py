@@ -92,9 +92,10 @@ class Controller:
         self.D = 0.0
         self.e, self.s, self.r = e, self.slope_signal(e, y), r
         self.command = clip(u0, c.low, c.high)
+        self.held = self.command - c.gain * (c.setpoint_weight - 1.0) * r
         return self.command
 
-    def run(self, r, y, rho, m, held):
+    def run(self, r, y, rho, m):
         c, h = self.c, self.h
         e = self.error(r, y)
         s = self.slope_signal(e, y)
@@ -103,7 +104,7 @@ class Controller:
         b = {"forward": self.e, "backward": e, "trapezoid": 0.5 * (self.e + e)}[c.integral]
         if c.gap_integral == "saturating":
             alpha = 0.0 if math.isinf(c.integral_time) else -_expm1(-m * h / c.integral_time)
-            I = self.I + alpha * (held - self.I)
+            I = self.I + alpha * (self.held - self.I)
         else:
             bridge = e if c.gap_integral == "current" else self.e
             I = self.I + self.kih * ((m - 1.0) * bridge + b)
@@ -121,6 +122,7 @@ class Controller:
             share = 1.0 if c.tracking_time == 0 else min(1.0, m * h / c.tracking_time)
             I = I + (command - v - rho) * share
         self.I, self.D, self.e, self.s, self.r = I, D, e, s, r
+        self.held = command - rho - D - c.gain * (c.setpoint_weight - 1.0) * r
         return command
 
 
@@ -247,7 +249,7 @@ def replay(
             if model:
                 model.offset = yk
         elif link == "actuator":
-            would = c.run(r[k], yk, rho[k], 1, command)
+            would = c.run(r[k], yk, rho[k], 1)
         y_hat = model.predicted() if model else 0.0
         x = would if link == "actuator" else (yk if signal == "measurement" else e)
         if k == 0:
@@ -264,7 +266,7 @@ def replay(
             moved = signal == "measurement" and abs(r[k] - c.r) > r_step
             received = yk if update else received
             if update or moved or between == "run":
-                command = would = c.run(r[k], received, rho[k], since_run, command)
+                command = would = c.run(r[k], received, rho[k], since_run)
                 since_run = 0
         if update:
             last, x_sent = k, x

@@ -66,8 +66,8 @@ def test_answers_lie_near_the_truth_and_their_intervals_hold_it(audited, index: 
         low, high = replay.interval90[name]
         # A 90 % interval may miss; these were looked at, and a wrong sign, delay or gain throws the truth far out.
         assert low <= truth <= high
-        # Quick settings on six days of log: within 10 %, where leaving the model out is 2 % (small delta) to 60 % off.
-        assert getattr(replay.measures, name) == pytest.approx(truth, rel=0.10)
+        # Quick settings on six days of log: within 15 %, where leaving the model out is 2 % (small delta) to 60 % off.
+        assert getattr(replay.measures, name) == pytest.approx(truth, rel=0.15)
         if abs(naive / truth - 1) > 0.05:
             assert abs(getattr(replay.measures, name) - truth) < abs(naive - truth)
 

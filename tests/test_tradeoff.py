@@ -22,7 +22,16 @@ def test_a_slower_clock_may_be_the_best_one() -> None:
 
 
 def test_no_clock_is_slow_enough() -> None:
-    assert best_clock(COUNTS, np.array([1.0, 3.0, 9.0]), 10.0) == np.inf
+    assert np.isnan(best_clock(COUNTS, np.array([1.0, 3.0, 9.0]), 10.0))
+
+
+def test_a_rule_beats_a_clock_that_ran_away_and_the_distance_is_not_told() -> None:
+    squares = np.repeat(np.array([1.0, np.inf, np.inf])[:, None], 24, axis=1)
+    found = compare(curve(squares), "whole", np.full(24, 50.0), np.full(24, 4.0))
+    assert found.outcome == "better"
+    assert found.clock_rms is None
+    assert found.difference90 is not None
+    assert found.difference90[0] == -np.inf
 
 
 def test_a_clock_that_ran_away_is_not_shared_with() -> None:

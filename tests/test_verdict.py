@@ -202,3 +202,10 @@ def test_rules_on_the_actuators_link_are_recommended_only_when_asked_for_alone()
     what, why = decision(case(on_actuator(0.95, 0.016)))
     assert what == "switch"
     assert "beside the sensor" in why
+
+
+def test_limits_that_the_record_does_not_keep_itself_decide_nothing() -> None:
+    outside = replace(measures(0.0, 0.015), outside_limits_s=0.2 * HOURS * 3600)
+    what, why = decision(case(replay(0.9, 0.02), baseline=outside))
+    assert what == "undecided"
+    assert "outside the stated limits 20 %" in why

@@ -57,6 +57,7 @@ def begin(control: FloatArray, now: FloatArray, u0: float, pid: Any, form: Any) 
         control[R.POSITION, lane] = u0
         control[R.SETPOINT_THEN, lane] = r
         control[R.DEVIATION, lane] = 0.0
+        control[R.HELD, lane] = control[R.COMMAND, lane] - pid[R.GAIN] * pid[R.WEIGHT] * r
 
 
 @compiled
@@ -101,7 +102,7 @@ def run_lane(
     if pid[R.RATE_GAIN] != 0.0:
         lag = pid[R.FILTER] + m * pid[R.PERIOD]
         D = (pid[R.FILTER] * control[R.DERIVATIVE, lane] + pid[R.RATE_GAIN] * (s - control[R.SLOPE_THEN, lane])) / lag
-    I = bridged(before, e, control[R.ERROR_THEN, lane], control[R.COMMAND, lane], m, pid, form, alpha)
+    I = bridged(before, e, control[R.ERROR_THEN, lane], control[R.HELD, lane], m, pid, form, alpha)
     fixed = pid[R.GAIN] * (e + pid[R.WEIGHT] * r) + D
     v = fixed + I
     if form[R.WINDUP] == R.WINDUP_FREEZE:
@@ -117,6 +118,7 @@ def run_lane(
     control[R.SLOPE_THEN, lane] = s
     control[R.SETPOINT_THEN, lane] = r
     control[R.WOULD, lane] = command
+    control[R.HELD, lane] = command - rho - D - pid[R.GAIN] * pid[R.WEIGHT] * r
 
 
 @compiled

@@ -39,6 +39,10 @@ class Tuning(NamedTuple):
     log_integral_time: float  # ln Ti [ln base periods]
 
 
+LONG_LAG = -1.0
+"""Log prior below which no lag that is long against the integral time is pushed."""
+
+
 @compiled
 def two_sided(t: float, above: float, below: float) -> float:
     """Log density of a normal with one spread on each side, without its constant."""
@@ -49,9 +53,10 @@ def two_sided(t: float, above: float, below: float) -> float:
 @compiled
 def log_chain_prior(x: FloatArray, m: int, entry: int, tuning: Tuning) -> float:
     """Terms that only lag chains have."""
-    value = two_sided(
-        -x[points.LN_POLE] - tuning.log_integral_time - tuning.log_lag, tuning.lag_above, tuning.lag_below
-    )
+    slower = -x[points.LN_POLE] - tuning.log_integral_time - tuning.log_lag
+    value = two_sided(slower, tuning.lag_above, tuning.lag_below)
+    # People also tune integrators, whose lag is as long as one likes: a longer lag than the integral time says little.
+    value = max(value, LONG_LAG) if slower > 0.0 else value
     if entry in (points.AT_INPUT, points.AT_BOTH_ENDS):
         faster = x[points.LN_CORNER] - x[points.LN_GAIN]
         value += two_sided(max(faster, 0.0), tuning.corner_above, tuning.corner_above)

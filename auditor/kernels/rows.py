@@ -21,7 +21,8 @@ POSITION = 6
 SETPOINT_THEN = 7  # setpoint at the last execution
 WOULD = 8  # the command computed at this sample, sent or not
 DEVIATION = 9  # replayed less recorded position
-CONTROL_ROWS = 10
+HELD = 10  # what a saturating integral runs towards: the command less all that is not I or K e
+CONTROL_ROWS = 11
 
 # pid: one array of settings shared by all lanes
 GAIN = 0

@@ -13,11 +13,16 @@ from auditor.errors import Problem, RuleError
 from auditor.identify.plant import Plant
 from auditor.identify.thresholds import DIVERGED
 from auditor.kernels.replay import replay_span
+from auditor.logs.record import Record
 from auditor.replay.bench import Bench, form_array
 from auditor.replay.types import Series, Setting
 from auditor.rules import Rule, get_rule
 
 NEVER = np.iinfo(np.int64).max // 4
+
+
+TIE = 1e-6
+"""Share of a stored step by which thresholds and bounds on the lattice are moved off it."""
 
 
 @dataclass(frozen=True, eq=False, slots=True, kw_only=True)
@@ -75,7 +80,7 @@ def replay_lanes(bench: Bench, setting: Setting) -> Lanes:
     rule = get_rule(setting.rule)
     values = rule.complete(setting.values)
     record = bench.record
-    packed = np.array(rule.pack(values, record.period), dtype=float)
+    packed = np.array(rule.pack(_off_lattice(rule, values, setting, record), record.period), dtype=float)
     lanes = len(bench.delay)
     gap, silence = guards(setting, record.period)
     form = form_array(bench.controller, setting.link, setting.signal, setting.between)
@@ -95,6 +100,17 @@ def replay_lanes(bench: Bench, setting: Setting) -> Lanes:
             out_y, out_u, out_updated,
         )  # fmt: skip
     return Lanes(y=out_y, u=out_u, updated=out_updated, draws=bench.draws)
+
+
+def _off_lattice(rule: Rule, values: dict[str, float], setting: Setting, record: Record) -> dict[str, float]:
+    """Move a threshold off the lattice of a measurement stored in steps, where rounding would decide about ties.
+
+    "More than three steps" must mean four, whatever the last bit of a difference says.
+    """
+    name = rule.threshold
+    if not record.y_quantum or setting.link != "sensor" or name is None or rule.name == "level-crossing":
+        return values
+    return values | {name: values[name] + TIE * record.y_quantum}
 
 
 def _rows(packed: FloatArray, lanes: int) -> FloatArray:

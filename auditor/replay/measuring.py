@@ -13,6 +13,7 @@ from auditor.controllers.pid import Pid
 from auditor.kernels import measures as M
 from auditor.logs.record import Record, Span
 from auditor.loop import Limits
+from auditor.replay.lanes import TIE
 from auditor.replay.types import Measures
 
 ROUNDING = 0.002
@@ -42,11 +43,13 @@ def totals(
     starts = np.array([s.start for s in spans], dtype=np.int64)
     stops = np.array([s.stop for s in spans], dtype=np.int64)
     near = 0.5 * record.u_quantum if record.u_quantum else 1e-9 * (_span_of(controller) or 1.0)
+    # A value stored exactly on a bound is inside, whatever the last bit of it says.
+    tie = TIE * (record.y_quantum or 0.0)
     bounds = np.array(
         [
-            np.inf if limits.band is None else limits.band,
-            -np.inf if limits.low is None else limits.low,
-            np.inf if limits.high is None else limits.high,
+            np.inf if limits.band is None else limits.band + tie,
+            -np.inf if limits.low is None else limits.low - tie,
+            np.inf if limits.high is None else limits.high + tie,
             controller.low,
             controller.high,
             near,

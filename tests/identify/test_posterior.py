@@ -129,7 +129,8 @@ def point(**more: float) -> np.ndarray:
         (point(), 0, 0, 1.5 + 0.5 * (np.e - 1), -0.5 / 0.6**2),  # one e-fold more excess
         (point(), 0, 0, 1 + 0.5 / np.e, -0.5 / 1.2**2),
         (point(), 0, 0, 1.0, -0.5 * (np.log(1e-3 / 0.5) / 1.2) ** 2),  # floored
-        (point(ln_pole=-np.log(LAG) - 1.1), 0, 0, 1.5, -0.5 / 0.7**2),  # lag one e-fold longer
+        (point(ln_pole=-np.log(LAG) - 0.6), 0, 0, 1.5, -0.5 * (0.5 / 0.7) ** 2),  # lag half an e-fold longer
+        (point(ln_pole=-np.log(LAG) - 3.1), 0, 0, 1.5, -1.0),  # an integrator: longer says no more
         (point(ln_pole=-np.log(LAG) + 0.9), 0, 0, 1.5, -0.5 / 0.35**2),
         (point(ln_gain=-5.5), 0, 0, 1.5, -0.5 * (0.5 / 0.6) ** 2),  # load corner above kv
         (point(ln_gain=-5.5), 0, 1, 1.5, -1.5),  # no such term for a load at the output
