@@ -21,7 +21,7 @@ CAP = 10.0
 """Largest lead over the clock that is told apart, in RMS errors of the rule."""
 
 SPACING = 1.1
-"""Ratio of neighbouring divisors where they are not dense; coarser ones overstate the clock near its stability's end."""
+"""Ratio of neighbouring divisors where they are not dense; coarser ones overstate the clock near instability."""
 
 PHASES = 8
 """The clock at every n is averaged over up to this many phases: where it starts is chance."""
