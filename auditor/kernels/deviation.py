@@ -53,3 +53,12 @@ def advance(
     for i in range(n):
         for lane in range(lanes):
             dx[i, lane] = following[i, lane]
+
+
+@compiled
+def leading_zeros(column: IntArray) -> int:
+    """Number of lanes before the first that is perturbed."""
+    for lane in range(len(column)):
+        if column[lane] != 0:
+            return lane
+    return len(column)

@@ -15,7 +15,7 @@ from numba import types
 from auditor.arrays import FloatArray, IntArray
 from auditor.kernels import rows as R
 from auditor.kernels.control import begin, choices_of, move, run_lane, settings_of
-from auditor.kernels.deviation import advance, occupied, recall
+from auditor.kernels.deviation import advance, leading_zeros, occupied, recall
 from auditor.kernels.device import advance_device, correct, predict
 from auditor.kernels.jit import RULE_TYPE, compiled, compiled_as
 
@@ -35,15 +35,6 @@ def device_arrays(n: int, lanes: int, ring: int) -> Any:
     """State of the devices' models at rest: state and successor, offset and load, and past positions."""
     state = (2 * n, lanes)
     return np.zeros(state), np.zeros(state), np.zeros((2, lanes)), np.zeros((ring, lanes))
-
-
-@compiled
-def leading_zeros(column: IntArray) -> int:
-    """Number of lanes before the first that is perturbed."""
-    for lane in range(len(column)):
-        if column[lane] != 0:
-            return lane
-    return len(column)
 
 
 @compiled
@@ -264,8 +255,7 @@ def replay_span(
     fired = np.zeros(lanes, dtype=np.uint8)
     which = np.zeros(lanes + 1, dtype=np.int64)
     for k in range(start, stop):
-        first = k == start
-        t = k - start
+        first, t = k == start, k - start
         observe(y[k], r[k], noise[k], column, quiet, quantum, C, dx, now)
         if first:
             begin(control, now, u[k], law, shape)
