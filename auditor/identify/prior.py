@@ -1,7 +1,7 @@
 """What the controller's own tuning tells about the plant: a weak prior.
 
 Someone tuned the loop, and people tune for a peak sensitivity around 1.5, for an integral time near the plant's long
-lag, and for a loop faster than its load (Åström & Hägglund, Advanced PID Control, 2006, §4.4 and §6.2). In pure
+lag, and for a loop faster than its load (Åström & Hägglund, Advanced PID Control, 2006; cited from memory). In pure
 regulation the likelihood has several nearly equal maxima, and this is what tells them apart; with setpoint moves it
 is overruled. The centres and spreads are a choice; the bench in `tests/benchmarks` says what it is worth.
 """
